@@ -97,12 +97,17 @@ CAUTIONS: dict[str, str] = {
     "advisory": "Advisory only: this service is never a stall-warning device.",
     "flight_manual": "It replaces or amends no approved flight manual.",
     "no_warning_no_proof": "The absence of a warning is no proof of safety.",
-    "stall_speed_unverified": "The stall speed is the user's and unverified: mass, centre of gravity, flaps, ice and damage change it.",
+    "stall_speed_unverified": (
+        "The stall speed is the user's and unverified: mass, centre of gravity, flaps, ice and damage change it."
+    ),
     "gusts_between_samples": "Gusts between the samples are not seen.",
     "flown_range": "The factor holds for the speeds and the configuration flown.",
     "factor_above_one": "A factor above 1 makes an aircraft that holds indicated speed fly slower.",
     "inspect_probe": "Inspect the probe and its tubes before loading a factor.",
-    "verify_in_flight": "Verify in flight at a safe height within local airspace and line-of-sight rules, never by slowing toward the stall when low.",
+    "verify_in_flight": (
+        "Verify in flight at a safe height within local airspace and line-of-sight rules, "
+        "never by slowing toward the stall when low."
+    ),
     "manned_aircraft": "Manned aircraft: licensed maintenance and pilots only.",
     "local_regulations": "Local regulations come first.",
 }

@@ -249,8 +249,8 @@ class FittedPoints:
 class FitResult:
     """Scale and wind with the covariance that respects correlated gusts.
 
-    `covariance` is (2, 2), of (ln pressure scale, zero offset [Pa]); `coverage_factor_95` times a standard uncertainty is
-    the half width of a 95 % interval (above 1.96 where little data speak).
+    `covariance` is (2, 2), of (ln pressure scale, zero offset [Pa]); `coverage_factor_95` times a standard uncertainty
+    is the half width of a 95 % interval (above 1.96 where little data speak).
     """
 
     converged: bool

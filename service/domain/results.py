@@ -153,6 +153,18 @@ class CorrectedSeries:
 
 
 @dataclass(frozen=True, slots=True)
+class LoadFactorSeries:
+    """Normal load factor at the probe's times, each (n,); NaN where nothing tells. [1]"""
+
+    load_factor: FloatArray
+    standard_uncertainty: FloatArray
+    assumed: BoolArray
+    """Not measured: taken for the maximum bank, the worst case."""
+    source: str
+    """In plain words; `none` where no source had a value."""
+
+
+@dataclass(frozen=True, slots=True)
 class StallMargins:
     """Margin = CAS / stall speed - 1, each (n,); NaN on the ground and while refused."""
 
@@ -257,6 +269,9 @@ class FitResult:
     pressure_scale: float
     zero_offset_pa: float
     covariance: FloatArray
+    log_density_uncertainty: float
+    """Share of the density in the uncertainty of ln K. It stays out of the true airspeed, whose scale was found with the
+    same density against the GPS: there the two errors cancel."""
     coverage_factor_95: float
     zero_offset_source: ZeroOffsetSource
     gps_delay_s: Estimate | None

@@ -1,0 +1,252 @@
+"""The container of a ULog file, through pyulog, made safe against hostile and damaged files.
+
+pyulog keeps every message, string and parameter that it meets, unfolds formats without a limit, prints, and takes a
+file cut short without a word. Here it keeps only the topics of our table, within limits, and says whether the file was
+cut. It offers no hooks for that, so this module leans on some private names of the library; a test pins them.
+"""
+
+import io
+import struct
+from collections import deque
+from dataclasses import dataclass
+from pathlib import Path
+from typing import Any
+
+from pyulog import ULog, core
+from pyulog.exceptions import ULogException
+
+from service.domain.errors import UnreadableInput
+from service.readers.reading import Progress
+from service.readers.ulog_fields import TIME, TOPIC_NAMES
+
+CONTAINER_ERRORS: tuple[type[Exception], ...] = (
+    ULogException,
+    struct.error,
+    LookupError,
+    ValueError,
+    TypeError,
+    AttributeError,
+    ArithmeticError,
+    RecursionError,
+    MemoryError,
+)
+"""All that the library is known or able to raise on bytes that are no log. (KeyError and IndexError are LookupErrors,
+UnicodeDecodeError is a ValueError, OverflowError an ArithmeticError.)"""
+
+READ_BUFFER_BYTES = 1 << 20
+MAXIMUM_FORMATS = 5_000
+"""Kinds of message a file may define; real ones define some hundreds."""
+MAXIMUM_FORMAT_BYTES = 8 << 20
+MAXIMUM_FIELDS = 2_000
+"""Fields of one needed topic, arrays unfolded; the largest met has 40."""
+MAXIMUM_SUBSCRIPTIONS = 200
+"""Instances of needed topics."""
+MAXIMUM_DROPOUTS = 10_000
+"""Records of lost data that are kept, the last ones."""
+DAMAGE_BUDGET_BYTES = 2 << 30
+"""Bytes read again and again while the library looks for the next message in damage; about 2 s. Then reading stops."""
+DAMAGE_STEP_BYTES = 2_000
+"""What one such step costs, in bytes, beside those it reads."""
+
+
+@dataclass(frozen=True, slots=True)
+class Dropout:
+    """The recorder's word that it lost data: the time of the message before, and the length it claims."""
+
+    time_s: float
+    duration_s: float
+
+
+@dataclass(frozen=True, slots=True)
+class Container:
+    topics: list[Any]
+    """One entry per topic and instance, as pyulog has them: `name`, `multi_id`, `data` (field -> array)."""
+    dropouts: tuple[Dropout, ...]
+    cut: bool
+    """The file ends in mid-message, or so damaged that what follows could not be read."""
+
+
+def load_container(path: Path, progress: Progress) -> Container:
+    """Load the needed topics of a file.
+
+    Raises
+    ------
+    UnreadableInput
+        On anything that is no such container.
+    """
+    try:
+        with _ProgressFile(path, progress) as raw:
+            log = _BoundedULog(io.BufferedReader(raw, READ_BUFFER_BYTES))
+            cut = log.cut or log.appended_beyond(path.stat().st_size)
+    except CONTAINER_ERRORS as error:
+        raise UnreadableInput(f"The log file cannot be decoded: {_plain(error)}.") from error
+    dropouts = tuple(Dropout(d.timestamp * TIME.scale, d.duration * 1e-3) for d in log.dropouts)
+    return Container(log.data_list, dropouts, cut)
+
+
+def _plain(error: Exception) -> str:
+    if isinstance(error, ULogException):
+        return "its header is no log's, or it needs a newer reader"
+    return f"its messages contradict each other ({type(error).__name__})"
+
+
+class _ProgressFile(io.FileIO):
+    """A file that tells how far it has been read, once per buffer."""
+
+    def __init__(self, path: Path, progress: Progress) -> None:
+        super().__init__(path, "rb")
+        self._bytes = max(path.stat().st_size, 1)
+        self._progress = progress
+
+    def readinto(self, buffer: Any) -> int | None:
+        count = super().readinto(buffer)
+        self._progress(min(1.0, self.tell() / self._bytes))
+        return count
+
+
+class _Header(ULog._MessageHeader):  # type: ignore[misc]
+    """Head of a message. `leftover` tells how a section ended: 0 or 1 to 2 bytes left over, or None: in a message."""
+
+    leftover: int | None = None
+    _unpack = struct.Struct("<HB").unpack
+
+    def initialize(self, data: bytes) -> None:
+        try:
+            self.msg_size, self.msg_type = self._unpack(data)
+        except struct.error:
+            self.leftover = len(data)
+            raise
+
+
+class _Subscription(ULog._MessageAddLogged):  # type: ignore[misc]
+    """Announces a topic. Only needed topics have their fields unfolded, and only so many."""
+
+    def _parse_format(self, message_formats: dict[str, Any]) -> None:
+        if self.message_name not in TOPIC_NAMES:
+            return
+        if _field_count(self.message_name, message_formats, depth=0) > MAXIMUM_FIELDS:
+            raise UnreadableInput(f"A message of the log file has more than {MAXIMUM_FIELDS} fields.")
+        super()._parse_format(message_formats)
+        if not any(field.field_name == TIME.name and field.type_str == TIME.kind for field in self.field_data):
+            raise ValueError("a topic without a time")
+
+
+def _field_count(name: str, formats: dict[str, Any], depth: int) -> int:
+    """Fields of a format with nested ones and arrays unfolded; stops counting beyond the limit."""
+    if depth > 8:
+        raise UnreadableInput("A message format of the log file contains itself.")
+    total = 0
+    for kind, length, _ in formats[name].fields:
+        single = 1 if kind in ULog._UNPACK_TYPES else _field_count(kind, formats, depth + 1)
+        # an empty format counts too: otherwise nested ones could be walked without end
+        total += max(single, 1) * max(length, 1)
+        if total > MAXIMUM_FIELDS:
+            break
+    return total
+
+
+class _NoInfo:
+    """Stands for an information or parameter message: none is read, so no answer can echo it."""
+
+    key = type = ""
+    value = None
+    is_continued = False
+    tag = 0
+
+
+_NO_INFO = _NoInfo()
+
+
+class _BoundedULog(ULog):  # type: ignore[misc]
+    """Keeps the needed topics and nothing else."""
+
+    _MessageAddLogged = _Subscription
+
+    def __init__(self, file: io.BufferedReader) -> None:
+        super().__init__(None)
+        self._short_definition = False
+        self._gave_up = False
+        self._damage_bytes = 0
+        self._format_bytes = 0
+        self._logged_messages: deque[Any] = deque(maxlen=0)
+        self._logged_messages_tagged: dict[int, deque[Any]] = {_NO_INFO.tag: deque(maxlen=0)}
+        self._changed_parameters: deque[Any] = deque(maxlen=0)
+        self._dropouts: deque[Any] = deque(maxlen=MAXIMUM_DROPOUTS)
+        self._headers: list[_Header] = []
+        self._load_file(file, _CountedNames())
+
+    @property
+    def cut(self) -> bool:
+        in_head = any(header.leftover for header in self._headers)
+        in_message = self._headers[-1].leftover is None
+        return self._gave_up or self._short_definition or in_head or in_message
+
+    def appended_beyond(self, file_bytes: int) -> bool:
+        """Whether data were appended beyond what is there of the file."""
+        return any(offset > file_bytes for offset in self._appended_offsets)
+
+    def _MessageHeader(self) -> _Header:  # noqa: N802 - the library's name
+        self._headers.append(_Header())
+        return self._headers[-1]
+
+    def MessageFormat(self, data: bytes, header: _Header) -> Any:  # noqa: N802
+        self._note_length(data, header)
+        self._format_bytes += len(data)
+        if len(self._message_formats) > MAXIMUM_FORMATS or self._format_bytes > MAXIMUM_FORMAT_BYTES:
+            raise UnreadableInput(f"The log file defines more than {MAXIMUM_FORMATS} kinds of message.")
+        return ULog.MessageFormat(data, header)
+
+    def _MessageInfo(self, data: bytes, header: _Header, is_info_multiple: bool = False) -> _NoInfo:  # noqa: N802, ARG002
+        self._note_length(data, header)
+        return _NO_INFO
+
+    def _MessageParameterDefault(self, data: bytes, header: _Header) -> _NoInfo:  # noqa: N802
+        self._note_length(data, header)
+        return _NO_INFO
+
+    def MessageLogging(self, _data: bytes, _header: _Header) -> _NoInfo:  # noqa: N802
+        return _NO_INFO
+
+    def MessageLoggingTagged(self, _data: bytes, _header: _Header) -> _NoInfo:  # noqa: N802
+        return _NO_INFO
+
+    def _add_message_info_multiple(self, msg_info: _NoInfo) -> None:
+        pass
+
+    def _add_parameter_default(self, msg_param: _NoInfo) -> None:
+        pass
+
+    def _note_length(self, data: bytes, header: _Header) -> None:
+        self._short_definition |= len(data) < header.msg_size
+
+    def _check_packet_corruption(self, header: _Header) -> bool:
+        corrupt = bool(super()._check_packet_corruption(header))
+        if corrupt:
+            self._damage_bytes += header.msg_size + DAMAGE_STEP_BYTES
+            if self._damage_bytes > DAMAGE_BUDGET_BYTES:
+                self._gave_up = True
+                # nothing more to read: the library ends as at the end of the file and keeps what it has
+                self._file_handle = io.BytesIO()
+        return corrupt
+
+
+class _CountedNames:
+    """The needed names, as the library asks for them; refuses a file that announces needed topics without end."""
+
+    def __init__(self) -> None:
+        self.count = 0
+
+    def __contains__(self, name: object) -> bool:
+        if name not in TOPIC_NAMES:
+            return False
+        self.count += 1
+        if self.count > MAXIMUM_SUBSCRIPTIONS:
+            raise UnreadableInput(f"The log file announces more than {MAXIMUM_SUBSCRIPTIONS} instances of its sensors.")
+        return True
+
+
+def _silent(*_words: object, **_options: object) -> None:
+    """In place of print within the library: standard output belongs to the answer."""
+
+
+core.print = _silent

@@ -36,9 +36,9 @@ class AirDataSeries:
     """Total minus static as read. NaN where missing."""
     static_pressure_pa: FloatArray
     air_temperature_k: FloatArray
+    """The virtual temperature where humidity is known."""
     temperature_uncertainty_k: float
     static_uncertainty_pa: float
-    relative_humidity: FloatArray | None
     altitude_m: FloatArray
     """Above mean sea level at the probe's times (GPS, else pressure altitude); NaN where unknown."""
     on_ground: BoolArray

@@ -65,8 +65,6 @@ def _parse_fast(rows: list[str], layout: Layout, used: Sequence[TableColumn]) ->
         if any(row.count(delimiter) != width - 1 for row in rows):
             return None
         text = _with_blanks_named("\n".join(rows).replace('"', ""), delimiter)
-    if "_" in text:
-        return None
     if delimiter != ",":
         text = text.replace(",", ".")
     try:

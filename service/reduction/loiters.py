@@ -39,21 +39,15 @@ def find_loiters(series: AirDataSeries, windows: Sequence[Window] = ()) -> tuple
 
     `used` is True for all that serve; `true_airspeed_mps` is the radius in the velocity plane until a fit says better.
     """
-    airborne = ~series.gps_on_ground
-    time_s = series.gps_time_s[airborne]
-    if time_s.size < 8:
+    if (~series.gps_on_ground).sum() < 8:
         return ()
-    north = _smoothed(time_s, series.velocity_north_mps[airborne])
-    east = _smoothed(time_s, series.velocity_east_mps[airborne])
-    centre = _centre_in_time(time_s, north, east)
-    heading = np.degrees(np.unwrap(np.arctan2(east - centre[1], north - centre[0])))
-    speed = np.hypot(east - centre[1], north - centre[0])
+    time_s, heading, speed = _headings(series)
     if windows:
         spans = [(w.start_s, w.end_s) for w in windows]
         return tuple(filter(None, (_loiter(time_s, heading, speed, start, end) for start, end in spans)))
     found = [_loiter(time_s, heading, speed, start, end) for start, end in _circles(time_s, heading)]
     circles = [loiter for loiter in found if loiter is not None]
-    if _joint_coverage(time_s, heading, circles) >= ENOUGH_COVERAGE_DEG:
+    if _coverage_within(time_s, heading, circles) >= ENOUGH_COVERAGE_DEG:
         return tuple(circles)
     patterns = [_loiter(time_s, heading, speed, start, end) for start, end in _patterns(time_s)]
     return tuple(replace(p, direction=Direction.STRAIGHT) for p in patterns if p is not None)
@@ -68,7 +62,26 @@ def heading_coverage(heading_deg: FloatArray) -> float:
     return float(360.0 - gaps.max())
 
 
-def _joint_coverage(time_s: FloatArray, heading: FloatArray, loiters: Sequence[Loiter]) -> float:
+def joint_coverage(series: AirDataSeries, loiters: Sequence[Loiter]) -> float:
+    """Heading coverage of all the loiters together, from the smoothed velocities alone. [deg]"""
+    if (~series.gps_on_ground).sum() < 8:
+        return 0.0
+    time_s, heading, _ = _headings(series)
+    return _coverage_within(time_s, heading, loiters)
+
+
+def _headings(series: AirDataSeries) -> tuple[FloatArray, FloatArray, FloatArray]:
+    """Times in the air, unwrapped headings of the air velocity [deg] and airspeeds [m/s] in the plane of the velocity."""
+    airborne = ~series.gps_on_ground
+    time_s = series.gps_time_s[airborne]
+    north = _smoothed(time_s, series.velocity_north_mps[airborne])
+    east = _smoothed(time_s, series.velocity_east_mps[airborne])
+    centre = _centre_in_time(time_s, north, east)
+    heading = np.degrees(np.unwrap(np.arctan2(east - centre[1], north - centre[0])))
+    return time_s, heading, np.hypot(east - centre[1], north - centre[0])
+
+
+def _coverage_within(time_s: FloatArray, heading: FloatArray, loiters: Sequence[Loiter]) -> float:
     inside = np.zeros(time_s.size, dtype=bool)
     for loiter in loiters:
         inside |= (time_s >= loiter.start_s) & (time_s <= loiter.end_s)

@@ -3,6 +3,8 @@
 import numpy as np
 
 from service.airdata import atmosphere
+from service.airdata.constants import SEA_LEVEL_TEMPERATURE_K
+from service.airdata.humidity import virtual_temperature_from_humidity
 from service.domain.arrays import BoolArray, FloatArray
 from service.domain.log import DecodedLog, GpsSamples, ProbeSamples
 from service.domain.results import AirDataSeries
@@ -18,9 +20,22 @@ STANDARD_TEMPERATURE_UNCERTAINTY_K = 10.0
 """Spread of the air about the standard atmosphere (the design notes' prior)."""
 CLIMB_RATE_WINDOW_S = 3.0
 
+_NONE = np.empty(0)
+_NO_GPS = GpsSamples(
+    time_s=_NONE,
+    velocity_north_mps=_NONE,
+    velocity_east_mps=_NONE,
+    velocity_down_mps=None,
+    latitude_deg=None,
+    longitude_deg=None,
+    altitude_m=None,
+    speed_uncertainty_mps=None,
+    source="none",
+)
 
-def build_series(log: DecodedLog, probe: ProbeSamples, gps: GpsSamples, ground_s: FloatArray, rest_s: FloatArray) -> AirDataSeries:
-    """Join the streams of `log` on the probe's times.
+
+def build_series(log: DecodedLog, probe: ProbeSamples, ground_s: FloatArray, rest_s: FloatArray) -> AirDataSeries:
+    """Join the streams of `log` on the times of its `probe`.
 
     Parameters
     ----------
@@ -28,11 +43,12 @@ def build_series(log: DecodedLog, probe: ProbeSamples, gps: GpsSamples, ground_s
         Spans on the ground, and of those the spans at rest. [s]
     """
     time_s = probe.time_s
+    gps = log.gps or _NO_GPS
     valid = np.isfinite(gps.velocity_north_mps) & np.isfinite(gps.velocity_east_mps)
     gps_time_s = gps.time_s[valid]
     gps_altitude_m = np.full(gps_time_s.size, np.nan) if gps.altitude_m is None else gps.altitude_m[valid]
     static_pa, static_uncertainty_pa, standard_static = _static_pressure(log, gps, time_s)
-    temperature_k, temperature_uncertainty_k, humidity, standard_temperature = _temperature(log, time_s, static_pa)
+    temperature_k, temperature_uncertainty_k, standard_temperature = _temperature(log, time_s, static_pa)
     down_mps, has_down = _velocity_down(log, gps, valid, gps_time_s)
     altitude_m = _resampled(gps_time_s, gps_altitude_m, time_s)
     if not np.isfinite(altitude_m).any() and not standard_static:
@@ -45,7 +61,6 @@ def build_series(log: DecodedLog, probe: ProbeSamples, gps: GpsSamples, ground_s
         air_temperature_k=temperature_k,
         temperature_uncertainty_k=temperature_uncertainty_k,
         static_uncertainty_pa=static_uncertainty_pa,
-        relative_humidity=humidity,
         altitude_m=altitude_m,
         on_ground=within(time_s, ground_s),
         at_rest=within(time_s, rest_s),
@@ -61,7 +76,9 @@ def build_series(log: DecodedLog, probe: ProbeSamples, gps: GpsSamples, ground_s
         standard_temperature=standard_temperature,
         probe_source=probe.source,
         static_source=_static_source(log, standard_static),
-        temperature_source="standard atmosphere" if log.temperature is None or standard_temperature else log.temperature.source,
+        temperature_source="standard atmosphere"
+        if log.temperature is None or standard_temperature
+        else log.temperature.source,
     )
 
 
@@ -90,19 +107,19 @@ def _static_pressure(log: DecodedLog, gps: GpsSamples, time_s: FloatArray) -> tu
     return sea_level, UNKNOWN_ALTITUDE_STATIC_UNCERTAINTY_PA, True
 
 
-def _temperature(
-    log: DecodedLog, time_s: FloatArray, static_pa: FloatArray
-) -> tuple[FloatArray, float, FloatArray | None, bool]:
+def _temperature(log: DecodedLog, time_s: FloatArray, static_pa: FloatArray) -> tuple[FloatArray, float, bool]:
+    """Temperature (virtual where the humidity is known), its standard uncertainty, whether it is the standard one."""
     measured = log.temperature
     if measured is not None and np.isfinite(measured.air_temperature_k).any():
-        humidity = measured.relative_humidity
-        if humidity is not None:
-            humidity = _resampled(measured.time_s, humidity, time_s)
-            humidity = humidity if np.isfinite(humidity).all() and humidity.size else None
         temperature = _resampled(measured.time_s, measured.air_temperature_k, time_s)
-        return temperature, measured.standard_uncertainty_k, humidity, False
+        if measured.relative_humidity is not None and np.isfinite(measured.relative_humidity).any():
+            humidity = np.clip(_resampled(measured.time_s, measured.relative_humidity, time_s), 0.0, 1.0)
+            moist = virtual_temperature_from_humidity(static_pa, temperature, humidity)
+            temperature = np.where(np.isfinite(moist), moist, temperature)
+        return temperature, measured.standard_uncertainty_k, False
     standard = atmosphere.standard_temperature_from_altitude(atmosphere.pressure_altitude_from_pressure(static_pa))
-    return standard, STANDARD_TEMPERATURE_UNCERTAINTY_K, None, True
+    standard = np.where(np.isfinite(standard), standard, SEA_LEVEL_TEMPERATURE_K)
+    return standard, STANDARD_TEMPERATURE_UNCERTAINTY_K, True
 
 
 def _velocity_down(

@@ -165,7 +165,8 @@ def _doubts(
     if series.standard_static:
         doubts.append(
             ReasonGiven(
-                Reason.STANDARD_STATIC, "No static pressure was given: the standard atmosphere's at the GPS altitude is used."
+                Reason.STANDARD_STATIC,
+                "No static pressure was given: the standard atmosphere's at the GPS altitude is used.",
             )
         )
     return doubts

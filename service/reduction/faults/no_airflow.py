@@ -19,13 +19,13 @@ from service.domain.spans import runs
 from service.reduction.faults.blocked import blocked_message
 from service.reduction.faults.blocks import MEDIAN_OF_CHI_SQUARE, SecondBlocks, second_blocks
 from service.reduction.faults.evidence import FlightEvidence
-from service.reduction.faults.finding import Finding, only, probe_finding
+from service.reduction.faults.finding import Finding, only, probe_finding, span_of
 
 WINDOWS: tuple[tuple[int, float], ...] = ((15, 0.03), (30, 0.15))
 """Blocks in a window, and the share of the flight's usual variance below which it is quiet. Short windows of sound
 flights are quiet by chance more often. Shares from simulated sound flights: the quietest window of one in a hundred
 flights through calm air kept 0.06 and 0.13."""
-WINDOWS_SLOW: tuple[tuple[int, float], ...] = ((15, 0.04), (30, 0.1))
+WINDOWS_SLOW: tuple[tuple[int, float], ...] = ((15, 0.02), (30, 0.07))
 """The same where too few samples per second tell no noise."""
 NOISE_RATIO = 2.0
 """Variance over what noise explains: chi-square of a quiet window of 30 stays below it, sound ones above 2.4."""
@@ -42,9 +42,9 @@ MOST_MISSING = 0.2
 LEAST_CONTRAST = 2.0
 MOST_MISFIT = 12.0
 """Of one block, half its square: a lone outlier does not end a span."""
-SLOPE_DEVIATIONS = 4.0
-LEAST_SLOPE = 0.2
-"""Reading over static pressure, sign turned: one over the largest pressure scale."""
+SLOPE_DEVIATIONS = 6.0
+UNEXPLAINED_SHARE = 0.25
+"""Of the reading's variance: more than the altitude leaves unexplained is no trapped pressure."""
 SINK_SHARE = 0.2
 SINK_NOISE = 3.0
 SINK_PER_BLOCK = 1.3
@@ -83,41 +83,44 @@ class _Still:
 
 
 def find_no_airflow(evidence: FlightEvidence) -> list[Finding]:
-    """Spans in flight without gusts in the reading: trapped, or blocked where the reading holds a level of its own."""
+    """Spans in flight without gusts in the reading: trapped if it follows the altitude, blocked if it fell to a level."""
     if evidence.series.time_s.size < min(length for length, _ in WINDOWS):
         return []
     blocks = second_blocks(evidence)
     findings = []
     for still in _joined(blocks, [_fitted(blocks, first, last) for first, last in runs(_quiet(blocks))]):
         samples = only(evidence.series.time_s.size, int(blocks.start[still.first]), int(blocks.start[still.last]))
-        if samples.any():
-            findings.append(_finding(evidence, blocks, still, samples))
+        kind = _kind(evidence, blocks, still)
+        if samples.any() and kind is not None:
+            findings.append(_finding(evidence.series.time_s, kind, samples))
     return findings
 
 
-def _finding(evidence: FlightEvidence, blocks: SecondBlocks, still: _Still, samples: BoolArray) -> Finding:
-    time_s = evidence.series.time_s
-    start_s, end_s = float(time_s[samples][0]), float(time_s[samples][-1])
-    if _is_blocked(evidence, blocks, still):
-        return probe_finding(FaultKind.BLOCKED, time_s, samples, blocked_message(start_s, end_s))
+def _finding(time_s: FloatArray, kind: FaultKind, samples: BoolArray) -> Finding:
+    start_s, end_s = span_of(time_s, samples)
+    if kind is FaultKind.BLOCKED:
+        return probe_finding(kind, time_s, samples, blocked_message(start_s, end_s))
     message = (
-        f"The reading shows no gusts and follows the altitude from {start_s:.1f} s to {end_s:.1f} s: ram hole and drain are "
-        "most likely blocked and hold the pressure of that moment. Clear the probe and blow-test it before flying."
+        f"The reading shows no gusts and follows the altitude from {start_s:.1f} s to {end_s:.1f} s: ram hole and drain "
+        "are most likely blocked and hold the pressure of that moment. Clear the probe and blow-test it before flying."
     )
-    return probe_finding(FaultKind.TRAPPED, time_s, samples, message)
+    return probe_finding(kind, time_s, samples, message)
 
 
-def _is_blocked(evidence: FlightEvidence, blocks: SecondBlocks, still: _Still) -> bool:
-    """Blocked if the reading keeps its level while the altitude changes; else if that level is zero or a drop led to it."""
-    follows = -still.slope > SLOPE_DEVIATIONS * still.slope_uncertainty
-    keeps = -still.slope + SLOPE_DEVIATIONS * still.slope_uncertainty < LEAST_SLOPE
-    if follows or keeps:
-        return keeps
+def _kind(evidence: FlightEvidence, blocks: SecondBlocks, still: _Still) -> FaultKind | None:
+    """None where the air was only quiet: the reading neither follows the altitude nor fell to a level that air explains not."""
     inside = slice(still.first, still.last)
-    level, expected = np.nanmedian(blocks.reading_pa[inside]), np.median(blocks.expected_pa[inside])
-    if evidence.zero is not None:
-        return bool(abs(level - evidence.zero.value_pa) < NOTHING_SHARE * expected)
-    return bool(_usual_level(blocks, inside) - level > SINK_SHARE * expected)
+    scatter = float(np.nanvar(blocks.reading_pa[inside]))
+    follows = -still.slope > SLOPE_DEVIATIONS * still.slope_uncertainty
+    if follows and still.deviation_pa**2 < UNEXPLAINED_SHARE * scatter:
+        return FaultKind.TRAPPED
+    level, expected = float(np.nanmedian(blocks.reading_pa[inside])), float(np.median(blocks.expected_pa[inside]))
+    usual = _usual_level(blocks, inside)
+    if evidence.zero is not None and np.isfinite(usual):
+        blocked = abs(level - evidence.zero.value_pa) < NOTHING_SHARE * expected
+    else:
+        blocked = not usual - level < SINK_SHARE * expected
+    return FaultKind.BLOCKED if blocked else None
 
 
 def _usual_level(blocks: SecondBlocks, but: slice) -> float:
@@ -190,7 +193,7 @@ def _still_windows(windows: _Windows, share: float, slow: bool) -> BoolArray:
         white = windows.variance_pa2 < NOISE_RATIO * windows.noise_pa2
     if sound.sum() < max(FEWEST_SOUND * windows.valid.sum(), FEWEST_WINDOWS):
         return np.zeros(windows.valid.size, dtype=bool)
-    usual = float(np.quantile(windows.variance_pa2[sound], 0.75 if slow else 0.5))
+    usual = float(np.median(windows.variance_pa2[sound]))
     return np.asarray(windows.valid & white & (windows.variance_pa2 < share * usual))
 
 

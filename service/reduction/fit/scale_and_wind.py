@@ -13,7 +13,7 @@ import numpy as np
 
 from service.airdata.gusts import GustGeometry
 from service.airdata.pitot import calibrated_airspeed_from_impact_pressure
-from service.domain.arrays import BoolArray, FloatArray
+from service.domain.arrays import BoolArray, FloatArray, IntArray
 from service.domain.codes import Reason, ZeroOffsetSource
 from service.domain.results import (
     AirDataSeries,
@@ -61,6 +61,18 @@ class PreliminaryFit:
     blocks: Blocks
     state: State
 
+    def air_heading_rad(self) -> FloatArray:
+        """(m,) direction of the air velocity at the blocks' samples."""
+        air = residuals(self.probe, self.blocks, self.state).air_velocity_mps
+        return np.asarray(np.arctan2(air[:, 1], air[:, 0]))
+
+    def turn_numbers(self) -> IntArray:
+        """(m,) number of the turn of each sample, all loiters counted on."""
+        blocks = self.blocks
+        place = np.arange(blocks.starts.size) - np.searchsorted(blocks.loiter, blocks.loiter)
+        turn = place // blocks.memory[blocks.loiter] + blocks.loiter * (1 + int(place.max()))
+        return np.repeat(turn, blocks.counts.astype(np.int64))
+
 
 def preliminary_fit(
     series: AirDataSeries, usable: BoolArray, loiters: Sequence[Loiter], offset: OffsetPrior, delay: DelayPrior
@@ -84,7 +96,8 @@ def preliminary_fit(
     state = start_state(probe, blocks, offset, delay)
     if state is None:
         return ReasonGiven(
-            Reason.PROBE_FAULT, "The readings do not rise with airspeed at any scale: look for blocked or swapped tubes."
+            Reason.PROBE_FAULT,
+            "The readings do not rise with airspeed at any scale: look for blocked or swapped tubes.",
         )
     blocks = without_outliers(probe, blocks, state)
     state = start_state(probe, blocks, offset, delay) or state
@@ -137,7 +150,9 @@ def _linear_model(
     precision = np.zeros((design.shape[1],) * 2)
     precision[1, 1] = offset.standard_uncertainty_pa**-2
     precision[2, 2] = delay.standard_uncertainty_s**-2
-    precision[FIRST_LOITER_COLUMN:first_drift, FIRST_LOITER_COLUMN:first_drift] = _wind_precision(series, blocks, loiters)
+    precision[FIRST_LOITER_COLUMN:first_drift, FIRST_LOITER_COLUMN:first_drift] = _wind_precision(
+        series, blocks, loiters
+    )
     drifts = np.arange(first_drift, design.shape[1])
     precision[drifts, drifts] = WIND_DRIFT_MPS_PER_MIN**-2
     mean[FIRST_LOITER_COLUMN:first_drift] = (state.wind_mps.mean(axis=0) - state.wind_mps).ravel()
@@ -182,7 +197,9 @@ def _wind_precision(series: AirDataSeries, blocks: Blocks, loiters: int) -> Floa
     """Winds of loiters near in time and height are alike; their common level is free."""
     time_s = _loiter_means(blocks, blocks.mean(blocks.time_s), loiters)
     height = _loiter_means(blocks, blocks.mean(blocks.altitude_m), loiters)
-    apart = np.abs(time_s[:, None] - time_s) / WIND_CHANGE_TIME_S + np.abs(height[:, None] - height) / WIND_CHANGE_HEIGHT_M
+    apart = (
+        np.abs(time_s[:, None] - time_s) / WIND_CHANGE_TIME_S + np.abs(height[:, None] - height) / WIND_CHANGE_HEIGHT_M
+    )
     covariance = WIND_CHANGE_MPS**2 * np.exp(-apart) + 1e-6 * np.eye(loiters) + UNKNOWN_WIND_MPS**2
     return np.kron(np.linalg.inv(covariance), np.eye(2))
 

@@ -91,9 +91,7 @@ def without_outliers(probe: ProbeSpeed, blocks: Blocks, state: State) -> Blocks:
     return blocks.keep(good) if np.bincount(block_of[good]).size and good.sum() >= 8 else blocks
 
 
-def clear_delay(
-    probe: ProbeSpeed, blocks: Blocks, state: State, offset: OffsetPrior, delay: DelayPrior
-) -> DelayPrior:
+def clear_delay(probe: ProbeSpeed, blocks: Blocks, state: State, offset: OffsetPrior, delay: DelayPrior) -> DelayPrior:
     """The delay that the data show beyond doubt (quick changes of speed in calm air), else the prior."""
     misfit = []
     for tried in DELAYS_TRIED_S.tolist():

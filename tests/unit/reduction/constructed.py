@@ -30,7 +30,6 @@ def series_of(reading_pa: Any, step_s: float = 0.1, **changes: Any) -> AirDataSe
         air_temperature_k=np.full(n, 288.15),
         temperature_uncertainty_k=0.0,
         static_uncertainty_pa=0.0,
-        relative_humidity=None,
         altitude_m=np.zeros(n),
         on_ground=np.zeros(n, dtype=bool),
         at_rest=np.zeros(n, dtype=bool),

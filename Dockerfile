@@ -19,8 +19,9 @@ RUN /venv/bin/loiterwise --version && /venv/bin/python3 -m compileall -q /venv/l
 
 # --- run: the same base, that environment, an account without rights
 FROM ${BASE_IMAGE}
+# everyone may write to /data: whatever is mounted there (a tmpfs takes over the mode, but not the owner)
 RUN useradd --uid 10001 --no-create-home --home-dir /nonexistent --shell /usr/sbin/nologin loiterwise \
-    && mkdir /data && chown 10001:10001 /data
+    && mkdir --mode 1777 /data && chown 10001:10001 /data
 COPY --from=build /venv /venv
 ENV PATH=/venv/bin:$PATH \
     PYTHONUNBUFFERED=1 \

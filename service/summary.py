@@ -27,11 +27,11 @@ def _calibration(calibration: Calibration) -> Iterator[str]:
     yield from (f"  {reason.message} [{reason.code.value}]" for reason in calibration.reasons)
     if calibration.speed_scale is not None:
         yield f"  {_reads(calibration.speed_scale)}"
-    yield _row("speed scale", calibration.speed_scale, 4)
-    yield _row("pressure scale", calibration.pressure_scale, 4)
-    yield _row("total speed scale", calibration.total_speed_scale, 4, "(the factor to load)")
-    yield _row("zero offset", calibration.zero_offset_pa, 2, f"Pa ({calibration.zero_offset_source.value})")
-    yield _row("GPS delay", calibration.gps_delay_s, 2, "s")
+    yield from _row("speed scale", calibration.speed_scale, 4)
+    yield from _row("pressure scale", calibration.pressure_scale, 4)
+    yield from _row("total speed scale", calibration.total_speed_scale, 4, note=", the factor to load")
+    yield from _row("zero offset", calibration.zero_offset_pa, 2, "Pa", f", {calibration.zero_offset_source.value}")
+    yield from _row("GPS delay", calibration.gps_delay_s, 2, "s")
     if calibration.airspeed_range_mps is not None:
         low, high = calibration.airspeed_range_mps
         yield _line("holds for CAS", f"{low:.1f} to {high:.1f} m/s")
@@ -54,17 +54,17 @@ def _wind(reduction: Reduction) -> Iterator[str]:
     if reduction.wind is not None:
         yield from _wind_rows("wind", reduction.wind)
     for entry in reduction.wind_by_loiter:
-        yield _row(f"  in loiter {entry.loiter}", entry.wind.speed_mps, 1, f"m/s{_from(entry.wind)}")
+        yield from _row(f"  in loiter {entry.loiter}", entry.wind.speed_mps, 2, "m/s", _from(entry.wind))
 
 
 def _wind_rows(name: str, wind: WindEstimate) -> Iterator[str]:
-    yield _row(name, wind.speed_mps, 1, f"m/s{_from(wind)}")
-    yield _row("  towards north", wind.north_mps, 1, "m/s")
-    yield _row("  towards east", wind.east_mps, 1, "m/s")
+    yield from _row(name, wind.speed_mps, 2, "m/s", _from(wind))
+    yield from _row("  towards north", wind.north_mps, 2, "m/s")
+    yield from _row("  towards east", wind.east_mps, 2, "m/s")
 
 
 def _from(wind: WindEstimate) -> str:
-    return "" if wind.from_deg is None else f" from {wind.from_deg.value:.0f} deg"
+    return "" if wind.from_deg is None else f", from {wind.from_deg.value:.0f} deg"
 
 
 def _loiters(reduction: Reduction) -> Iterator[str]:
@@ -80,7 +80,7 @@ def _loiters(reduction: Reduction) -> Iterator[str]:
 
 def _stall(reduction: Reduction) -> Iterator[str]:
     if reduction.stall_margins_absent is not None:
-        yield _line("stall margins", f"none: {reduction.stall_margins_absent}")
+        yield reduction.stall_margins_absent
     elif not reduction.stall_warnings:
         yield _line("stall warnings", "none (no proof of safety)")
     for warning in reduction.stall_warnings:
@@ -106,12 +106,13 @@ def _cautions() -> Iterable[str]:
     yield from (f"  - {sentence}" for sentence in CAUTIONS.values())
 
 
-def _row(name: str, estimate: Estimate | None, decimals: int, unit: str = "") -> str:
+def _row(name: str, estimate: Estimate | None, decimals: int, unit: str = "", note: str = "") -> Iterator[str]:
+    """One line, or none for what could not be made."""
     if estimate is None:
-        return _line(name, "none")
+        return
     low, high = estimate.interval_95
-    value = f"{estimate.value:.{decimals}f} ± {estimate.standard_uncertainty:.{decimals}f}"
-    return _line(name, f"{value} {unit} (95 %: {low:.{decimals}f} to {high:.{decimals}f})".replace("  ", " "))
+    value = f"{estimate.value:.{decimals}f} ± {estimate.standard_uncertainty:.{decimals}f} {unit}".rstrip()
+    yield _line(name, f"{value} (95 %: {low:.{decimals}f} to {high:.{decimals}f}){note}")
 
 
 def _line(name: str, text: str) -> str:

@@ -131,13 +131,13 @@ def refused_reduction() -> Reduction:
 
 
 def batch(turns: int = 3) -> dict[str, Any]:
-    """A JSON batch: circles in still noiseless air, 5 Hz, with a wind of 3 m/s towards north and a scale of 1."""
+    """A JSON batch: circles at 5 Hz in a wind of 3 m/s towards north, noise on the probe alone, and a scale of 1."""
     time_s = np.arange(0.0, 30.0 * turns, 0.2)
     heading = 2 * np.pi * time_s / 30.0
-    pressure = 0.5 * 1.225 * 17.0**2
+    pressure = 0.5 * 1.225 * 17.0**2 + np.random.default_rng(1).normal(0.0, 1.0, time_s.size)
     return {
         "start_utc": "2026-05-04T09:12:00Z",
-        "probe": {"time_s": time_s.tolist(), "impact_pressure_pa": [pressure] * time_s.size},
+        "probe": {"time_s": time_s.tolist(), "impact_pressure_pa": pressure.tolist()},
         "gps": {
             "time_s": time_s.tolist(),
             "velocity_north_mps": (17.0 * np.cos(heading) + 3.0).tolist(),

@@ -4,6 +4,8 @@ from collections.abc import Iterator
 from dataclasses import dataclass
 from typing import Any
 
+from markupsafe import Markup, escape
+
 Json = dict[str, Any]
 
 
@@ -39,6 +41,14 @@ class SchemaText:
     name: str
     text: str
     rows: list[Row]
+
+
+def with_code(text: str) -> Markup:
+    """Text with its `names` as code."""
+    pieces = str(escape(text)).split("`")
+    if len(pieces) % 2 == 0:
+        return Markup("`").join(Markup(piece) for piece in pieces)
+    return Markup("").join(Markup(f"<code>{piece}</code>" if odd % 2 else piece) for odd, piece in enumerate(pieces))
 
 
 def operations_for_people(document: Json) -> list[OperationText]:

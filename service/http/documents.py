@@ -4,7 +4,7 @@ from flask import Blueprint, Response, render_template
 
 from schemas.wire import encode
 from service.domain.codes import CAUTIONS
-from service.http.docs_page import operations_for_people, schemas_for_people
+from service.http.docs_page import operations_for_people, schemas_for_people, with_code
 from service.http.openapi import openapi_document, problem_kinds
 
 REVALIDATE = "no-cache"
@@ -26,6 +26,7 @@ def documents() -> Blueprint:
             operations=operations_for_people(document),
             schemas=schemas_for_people(document),
             kinds=problem_kinds(),
+            with_code=with_code,
         )
         return _revalidated(Response(page, mimetype="text/html"))
 

@@ -67,6 +67,8 @@ def kind_of(error: LoiterwiseError) -> Kind:
 
 def _answer_known(error: LoiterwiseError) -> Response:
     kind = kind_of(error)
+    if kind.status >= 500:
+        _log.warning(kind.title, extra={"fields": {"cause": str(error.__cause__ or error)}})
     return _problem(
         kind.type,
         kind.title,

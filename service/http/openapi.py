@@ -113,6 +113,7 @@ def _bodies() -> Json:
         "multipart/form-data": {
             "schema": {
                 "type": "object",
+                "description": "Part `log`: a log, CSV or JSON batch. Part `settings`: JSON as of the schema Settings.",
                 "required": ["log"],
                 "properties": parts,
                 "additionalProperties": False,

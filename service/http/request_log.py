@@ -40,3 +40,8 @@ def follow_requests(app: Flask) -> None:
             },
         )
         return answer
+
+    @app.teardown_request
+    def forget(_error: BaseException | None) -> None:
+        # the thread goes on to other work, whose lines are not this request's
+        request_id.set(None)

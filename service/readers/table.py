@@ -66,19 +66,24 @@ class _TableText:
         self._limit = limits.line_characters
         self.cut = False
 
-    def blocks(self) -> Iterator[tuple[int, str]]:
-        """Number of the first line and whole lines."""
+    def blocks(self) -> Iterator[tuple[int, list[str]]]:
+        """Number of the first line, and whole lines without their ends."""
         number, pending = self._layout.next_line_number, self._layout.next_line
         while True:
             text = pending + self._file.read(BLOCK_CHARACTERS)
             rest = self._file.readline(self._limit + 1)
-            if len(rest) > self._limit:
-                raise InputTooLarge(f"A line is longer than {self._limit} characters.")
             text += rest
             if not text:
                 return
-            yield number, text if text.endswith("\n") else self._without_cut_line(text)
+            lines = (text if text.endswith("\n") else self._without_cut_line(text)).split("\n")
+            self._check_length(lines, number)
+            yield number, lines
             number, pending = number + text.count("\n"), ""
+
+    def _check_length(self, lines: list[str], number: int) -> None:
+        if max(map(len, lines)) > self._limit:
+            line = number + next(index for index, text in enumerate(lines) if len(text) > self._limit)
+            raise InputTooLarge(f"Line {line} is longer than {self._limit} characters.")
 
     def _without_cut_line(self, text: str) -> str:
         head, end, last = text.rpartition("\n")

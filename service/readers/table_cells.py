@@ -29,12 +29,12 @@ class Block:
     lines: IntArray
 
 
-def parse_block(text: str, first_line: int, layout: Layout, used: Sequence[TableColumn]) -> Block:
-    """Parse whole lines.
+def parse_block(lines: list[str], first_line: int, layout: Layout, used: Sequence[TableColumn]) -> Block:
+    """Parse a block of lines.
 
     Parameters
     ----------
-    text : lines with their ends.
+    lines : without their ends.
     first_line : number of the first one.
 
     Raises
@@ -42,7 +42,6 @@ def parse_block(text: str, first_line: int, layout: Layout, used: Sequence[Table
     WrongValues
         A cell is no number or a row has another number of cells than the header; the message says where.
     """
-    lines = text.split("\n")
     kept = [index for index, line in enumerate(lines) if not is_comment(line)]
     if not kept:
         return Block(np.empty((0, len(used))), np.empty(0, dtype=np.int64))

@@ -2,12 +2,14 @@
 
 from collections.abc import Iterable, Sequence
 from dataclasses import replace
+from datetime import datetime
 from pathlib import Path
 
 import numpy as np
 
+from service.domain.arrays import FloatArray
 from service.domain.codes import LogFormat
-from service.domain.log import DecodedLog, ReadingGap, SensorNote
+from service.domain.log import DecodedLog, GpsSamples, ReadingGap, SensorNote
 from service.readers.reading import ReadRequest, ReadResult
 from service.readers.ulog_air import (
     choose_probe,
@@ -53,34 +55,54 @@ def read_ulog(path: Path, request: ReadRequest) -> ReadResult:
     return ReadResult(_decoded_log(container, found, request.sha256))
 
 
-def _decoded_log(container: Container, found: Sequence[Recording], sha256: str) -> DecodedLog:
-    probe = choose_probe(found)
-    static = choose_static(found)
-    temperature = choose_temperature(found, probe.chosen)
-    receiver = choose("gps", of_topics(found, GPS_TOPICS), rate_gps)
-    attitude = choose_attitude(found)
-    acceleration = choose_acceleration(found)
-    choices = (probe, static, temperature, receiver, attitude, acceleration)
-    used = _used(choices)
+def _decoded_log(container: Container, found: list[Recording], sha256: str) -> DecodedLog:
+    choices = _choices(found)
+    used = _used(choices.values())
     zero_s = min((float(recording.time_s[0]) for recording in used), default=0.0)
-    gps = gps_samples(receiver.chosen, receiver.source, zero_s) if receiver.chosen else None
-    lift = flight_axis(acceleration, gps, zero_s)
+    steps_back = sum(recording.steps_back for recording in used)
+    gaps = _gaps(container.dropouts, [recording.time_s for recording in used], zero_s)
+    notes = _notes(choices.values(), zero_s)
+    gps, utc = _gps_and_utc(choices.pop("gps"), zero_s)
+    ground_contact = ground_contact_samples(found, gps, zero_s)
+    lift = flight_axis(choices["load_factor"], gps, zero_s)
+    # from here on a recording lives only until its stream is made
+    used.clear()
+    found.clear()
     return DecodedLog(
         format=LogFormat.ULOG,
         sha256=sha256,
-        start_utc=start_utc(receiver.chosen, zero_s) if receiver.chosen else None,
+        start_utc=utc,
         truncated=container.cut,
-        time_steps_back=sum(recording.steps_back for recording in used),
-        probe=probe_samples(probe, zero_s),
-        static=static_samples(static, zero_s),
-        temperature=temperature_samples(temperature, zero_s),
+        time_steps_back=steps_back,
+        load_factor=load_factor_samples(choices.pop("load_factor"), lift, zero_s),
+        attitude=attitude_samples(choices.pop("attitude"), lift, zero_s),
+        probe=probe_samples(choices.pop("probe"), zero_s),
+        static=static_samples(choices.pop("static"), zero_s),
+        temperature=temperature_samples(choices.pop("temperature"), zero_s),
         gps=gps,
-        attitude=attitude_samples(attitude, lift, zero_s),
-        load_factor=load_factor_samples(acceleration, lift, zero_s),
-        ground_contact=ground_contact_samples(found, gps, zero_s),
-        sensors=_notes(choices, zero_s),
-        gaps=_gaps(container.dropouts, used, zero_s),
+        ground_contact=ground_contact,
+        sensors=notes,
+        gaps=gaps,
     )
+
+
+def _gps_and_utc(choice: Choice, zero_s: float) -> tuple[GpsSamples | None, datetime | None]:
+    if choice.chosen is None:
+        return None, None
+    return gps_samples(choice.chosen, choice.source, zero_s), start_utc(choice.chosen, zero_s)
+
+
+def _choices(found: Sequence[Recording]) -> dict[str, Choice]:
+    """Sensor -> which of its instances is used."""
+    probe = choose_probe(found)
+    return {
+        "probe": probe,
+        "static": choose_static(found),
+        "temperature": choose_temperature(found, probe.chosen),
+        "gps": choose("gps", of_topics(found, GPS_TOPICS), rate_gps),
+        "attitude": choose_attitude(found),
+        "load_factor": choose_acceleration(found),
+    }
 
 
 def _used(choices: Iterable[Choice]) -> list[Recording]:
@@ -100,17 +122,15 @@ def _notes(choices: Iterable[Choice], zero_s: float) -> tuple[SensorNote, ...]:
     )
 
 
-def _gaps(dropouts: Iterable[Dropout], used: Sequence[Recording], zero_s: float) -> tuple[ReadingGap, ...]:
+def _gaps(dropouts: Iterable[Dropout], times: Sequence[FloatArray], zero_s: float) -> tuple[ReadingGap, ...]:
     """The recorder's own losses. Their lengths can be absurd, so each ends at the latest where data go on."""
     gaps = []
     for dropout in dropouts:
-        start, end = dropout.time_s, dropout.time_s + dropout.duration_s
-        following = [float(time_s) for recording in used if (time_s := _next_after(recording, start)) is not None]
-        if following and (end := min(end, *following)) > start >= zero_s:
+        start = dropout.time_s
+        following = [
+            float(time_s[np.searchsorted(time_s, start, side="right")]) for time_s in times if time_s[-1] > start
+        ]
+        end = min(start + dropout.duration_s, *following) if following else start
+        if end > start >= zero_s:
             gaps.append(ReadingGap(round(start - zero_s, 6), round(end - zero_s, 6)))
     return tuple(gaps)
-
-
-def _next_after(recording: Recording, time_s: float) -> float | None:
-    index = int(np.searchsorted(recording.time_s, time_s, side="right"))
-    return float(recording.time_s[index]) if index < recording.time_s.size else None

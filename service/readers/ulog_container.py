@@ -7,10 +7,11 @@ cut. It offers no hooks for that, so this module leans on some private names of 
 
 import io
 import struct
+import sys
 from collections import deque
 from dataclasses import dataclass
 from pathlib import Path
-from typing import Any
+from typing import Any, BinaryIO
 
 from pyulog import ULog, core
 from pyulog.exceptions import ULogException
@@ -18,6 +19,7 @@ from pyulog.exceptions import ULogException
 from service.domain.errors import UnreadableInput
 from service.readers.reading import Progress
 from service.readers.ulog_fields import TIME, TOPIC_NAMES
+from service.readers.ulog_messages import Taker, go_through
 
 CONTAINER_ERRORS: tuple[type[Exception], ...] = (
     ULogException,
@@ -33,6 +35,7 @@ CONTAINER_ERRORS: tuple[type[Exception], ...] = (
 """All that the library is known or able to raise on bytes that are no log. (KeyError and IndexError are LookupErrors,
 UnicodeDecodeError is a ValueError, OverflowError an ArithmeticError.)"""
 
+HEADER_BYTES = 16
 READ_BUFFER_BYTES = 1 << 20
 MAXIMUM_FORMATS = 5_000
 """Kinds of message a file may define; real ones define some hundreds."""
@@ -42,11 +45,11 @@ MAXIMUM_FIELDS = 2_000
 MAXIMUM_SUBSCRIPTIONS = 200
 """Instances of needed topics."""
 MAXIMUM_DROPOUTS = 10_000
-"""Records of lost data that are kept, the last ones."""
-DAMAGE_BUDGET_BYTES = 2 << 30
-"""Bytes read again and again while the library looks for the next message in damage; about 2 s. Then reading stops."""
-DAMAGE_STEP_BYTES = 2_000
-"""What one such step costs, in bytes, beside those it reads."""
+"""Records of lost data that are kept."""
+DAMAGE_STEPS = 1_000_000
+"""Steps by which the library may look for the next message in damage, about 2 s. Then reading stops."""
+DAMAGE_STEP_BYTES = 40_000
+"""Reading this much again counts as a step more."""
 
 
 @dataclass(frozen=True, slots=True)
@@ -75,13 +78,12 @@ def load_container(path: Path, progress: Progress) -> Container:
         On anything that is no such container.
     """
     try:
-        with _ProgressFile(path, progress) as raw:
-            log = _BoundedULog(io.BufferedReader(raw, READ_BUFFER_BYTES))
-            cut = log.cut or log.appended_beyond(path.stat().st_size)
+        with _ProgressFile(path, progress) as raw, io.BufferedReader(raw, READ_BUFFER_BYTES) as file:
+            log = _BoundedULog(file, path.stat().st_size)
     except CONTAINER_ERRORS as error:
         raise UnreadableInput(f"The log file cannot be decoded: {_plain(error)}.") from error
     dropouts = tuple(Dropout(d.timestamp * TIME.scale, d.duration * 1e-3) for d in log.dropouts)
-    return Container(log.data_list, dropouts, cut)
+    return Container(log.data_list, dropouts, log.is_cut)
 
 
 def _plain(error: Exception) -> str:
@@ -104,18 +106,36 @@ class _ProgressFile(io.FileIO):
         return count
 
 
-class _Header(ULog._MessageHeader):  # type: ignore[misc]
-    """Head of a message. `leftover` tells how a section ended: 0 or 1 to 2 bytes left over, or None: in a message."""
+_NEEDED = frozenset(name.encode() for name in TOPIC_NAMES)
 
-    leftover: int | None = None
-    _unpack = struct.Struct("<HB").unpack
+_unpack_head = struct.Struct("<HB").unpack
+
+
+class _Header(ULog._MessageHeader):  # type: ignore[misc]
+    """Head of a message, and where it stands.
+
+    `msg_size` never reaches beyond the file: the library goes back by it, whatever it could read.
+    """
+
+    def __init__(self, file: BinaryIO, file_bytes: int) -> None:
+        super().__init__()
+        self._file = file
+        self._file_bytes = file_bytes
+        self.leftover = 0
+        """Bytes at the end of the file that are too few for a head."""
+        self.end = 0
+        """Offset at which the last message ends, or claims to."""
 
     def initialize(self, data: bytes) -> None:
         try:
-            self.msg_size, self.msg_type = self._unpack(data)
+            self.msg_size, self.msg_type = _unpack_head(data)
         except struct.error:
             self.leftover = len(data)
             raise
+        at = self._file.tell()
+        self.end = at + self.msg_size
+        if self.end > self._file_bytes:
+            self.msg_size = max(0, self._file_bytes - at)
 
 
 class _Subscription(ULog._MessageAddLogged):  # type: ignore[misc]
@@ -162,11 +182,13 @@ class _BoundedULog(ULog):  # type: ignore[misc]
 
     _MessageAddLogged = _Subscription
 
-    def __init__(self, file: io.BufferedReader) -> None:
+    def __init__(self, file: BinaryIO, file_bytes: int) -> None:
         super().__init__(None)
-        self._short_definition = False
-        self._gave_up = False
-        self._damage_bytes = 0
+        self._file = file
+        self._file_bytes = file_bytes
+        self._reached = HEADER_BYTES
+        self._last_timestamp = 0
+        self._damage_steps = 0.0
         self._format_bytes = 0
         self._logged_messages: deque[Any] = deque(maxlen=0)
         self._logged_messages_tagged: dict[int, deque[Any]] = {_NO_INFO.tag: deque(maxlen=0)}
@@ -176,32 +198,27 @@ class _BoundedULog(ULog):  # type: ignore[misc]
         self._load_file(file, _CountedNames())
 
     @property
-    def cut(self) -> bool:
-        in_head = any(header.leftover for header in self._headers)
-        in_message = self._headers[-1].leftover is None
-        return self._gave_up or self._short_definition or in_head or in_message
-
-    def appended_beyond(self, file_bytes: int) -> bool:
-        """Whether data were appended beyond what is there of the file."""
-        return any(offset > file_bytes for offset in self._appended_offsets)
+    def is_cut(self) -> bool:
+        """Whether the file ends in mid-message, before data that it announces, or where reading had to stop early."""
+        reached = max(self._reached, *(header.end for header in self._headers))
+        announced = max(self._appended_offsets, default=0)
+        leftover = any(header.leftover for header in self._headers)
+        return reached != self._file_bytes or announced > self._file_bytes or leftover
 
     def _MessageHeader(self) -> _Header:  # noqa: N802 - the library's name
-        self._headers.append(_Header())
+        self._headers.append(_Header(self._file, self._file_bytes))
         return self._headers[-1]
 
     def MessageFormat(self, data: bytes, header: _Header) -> Any:  # noqa: N802
-        self._note_length(data, header)
         self._format_bytes += len(data)
         if len(self._message_formats) > MAXIMUM_FORMATS or self._format_bytes > MAXIMUM_FORMAT_BYTES:
             raise UnreadableInput(f"The log file defines more than {MAXIMUM_FORMATS} kinds of message.")
         return ULog.MessageFormat(data, header)
 
-    def _MessageInfo(self, data: bytes, header: _Header, is_info_multiple: bool = False) -> _NoInfo:  # noqa: N802, ARG002
-        self._note_length(data, header)
+    def _MessageInfo(self, _data: bytes, _header: _Header, is_info_multiple: bool = False) -> _NoInfo:  # noqa: N802, ARG002
         return _NO_INFO
 
-    def _MessageParameterDefault(self, data: bytes, header: _Header) -> _NoInfo:  # noqa: N802
-        self._note_length(data, header)
+    def _MessageParameterDefault(self, _data: bytes, _header: _Header) -> _NoInfo:  # noqa: N802
         return _NO_INFO
 
     def MessageLogging(self, _data: bytes, _header: _Header) -> _NoInfo:  # noqa: N802
@@ -216,18 +233,64 @@ class _BoundedULog(ULog):  # type: ignore[misc]
     def _add_parameter_default(self, msg_param: _NoInfo) -> None:
         pass
 
-    def _note_length(self, data: bytes, header: _Header) -> None:
-        self._short_definition |= len(data) < header.msg_size
+    def _read_file_data(self, names: "_CountedNames", read_until: int | None = None) -> None:
+        """Hurry over the sound messages; then let the library take what is left, and make arrays of it all."""
+        go_through(
+            self._file,
+            {number: _taker(subscription) for number, subscription in self._subscriptions.items()},
+            lambda kind, payload: self._take(kind, payload, names),
+            sys.maxsize if read_until is None else read_until,
+        )
+        self._reached = max(self._reached, self._file.tell())
+        super()._read_file_data(names, read_until)
+
+    def _take(self, kind: int, payload: bytes, names: "_CountedNames") -> tuple[int, Taker] | None:
+        """Take a sound message that is not data; for a needed topic, its number and where its data go."""
+        if kind == ULog.MSG_TYPE_DROPOUT and len(payload) == 2:
+            self._drop_out(payload)
+        if kind != ULog.MSG_TYPE_ADD_LOGGED_MSG:
+            return None
+        subscription = self._subscribe(payload, names)
+        return None if subscription is None else (subscription.msg_id, _taker(subscription))
+
+    def _subscribe(self, payload: bytes, names: "_CountedNames") -> Any:
+        """Take an announcement as the library does; None for a topic that is not needed, or nonsense."""
+        if len(payload) > 3 and payload[3:] not in _NEEDED:
+            self._filtered_message_ids.add(int.from_bytes(payload[1:3], "little"))
+            return None
+        try:
+            subscription = self._MessageAddLogged(payload, None, self._message_formats)
+        except (LookupError, ValueError, OverflowError, struct.error):
+            self._file_corrupt = True
+            return None
+        if subscription.message_name not in names:
+            return None
+        self._subscriptions[subscription.msg_id] = subscription
+        return subscription
+
+    def _drop_out(self, payload: bytes) -> None:
+        if len(self._dropouts) < MAXIMUM_DROPOUTS:
+            latest = max(map(_last_timestamp, self._subscriptions.values()), default=0)
+            self._last_timestamp = max(self._last_timestamp, latest)
+            self._dropouts.append(ULog.MessageDropout(payload, None, self._last_timestamp))
 
     def _check_packet_corruption(self, header: _Header) -> bool:
         corrupt = bool(super()._check_packet_corruption(header))
         if corrupt:
-            self._damage_bytes += header.msg_size + DAMAGE_STEP_BYTES
-            if self._damage_bytes > DAMAGE_BUDGET_BYTES:
-                self._gave_up = True
+            self._damage_steps += 1.0 + header.msg_size / DAMAGE_STEP_BYTES
+            if self._damage_steps > DAMAGE_STEPS:
                 # nothing more to read: the library ends as at the end of the file and keeps what it has
                 self._file_handle = io.BytesIO()
         return corrupt
+
+
+def _taker(subscription: Any) -> Taker:
+    return Taker(subscription.buffer, subscription.dtype.itemsize, subscription.max_data_size)
+
+
+def _last_timestamp(subscription: Any) -> int:
+    at = len(subscription.buffer) - subscription.dtype.itemsize + subscription.timestamp_offset
+    return int.from_bytes(subscription.buffer[at : at + 8], "little") if subscription.buffer else 0
 
 
 class _CountedNames:

@@ -28,17 +28,16 @@ def rate_gps(recording: Recording) -> Rating:
 
 def valid_fix(recording: Recording) -> BoolArray:
     """(n,) whether each sample holds a velocity that can be trusted."""
-    values = recording.values
     valid = np.ones(recording.time_s.size, dtype=np.bool_)
     for name in _VELOCITIES:
-        valid &= possible(name, values[name]) if name in values else False
-    if "fix" in values:
-        valid &= values["fix"] >= LOWEST_FIX
-    if "horizontal_uncertainty_m" in values:
+        valid &= possible(name, recording.values(name)) if name in recording else False
+    if "fix" in recording:
+        valid &= recording.values("fix") >= LOWEST_FIX
+    if "horizontal_uncertainty_m" in recording:
         # not stated (NaN) is not bad
-        valid &= ~(values["horizontal_uncertainty_m"] > LARGEST_HORIZONTAL_UNCERTAINTY_M)
-    if "velocity_valid" in values:
-        valid &= values["velocity_valid"] != 0.0
+        valid &= ~(recording.values("horizontal_uncertainty_m") > LARGEST_HORIZONTAL_UNCERTAINTY_M)
+    if "velocity_valid" in recording:
+        valid &= recording.values("velocity_valid") != 0.0
     return valid
 
 
@@ -47,9 +46,9 @@ def gps_samples(recording: Recording, source: str, zero_s: float) -> GpsSamples:
     valid = valid_fix(recording)
 
     def column(name: str) -> FloatArray | None:
-        if name not in recording.values:
+        if name not in recording:
             return None
-        return np.where(valid, cleaned(name, recording.values[name]), np.nan)
+        return np.where(valid, cleaned(name, recording.values(name)), np.nan)
 
     missing = np.full(recording.time_s.size, np.nan)
     north, east = (column(name) for name in _VELOCITIES)
@@ -68,9 +67,9 @@ def gps_samples(recording: Recording, source: str, zero_s: float) -> GpsSamples:
 
 def start_utc(recording: Recording, zero_s: float) -> datetime | None:
     """The instant of `zero_s` on the recorder's clock, by the median over samples with a fix; None without one."""
-    if "utc_s" not in recording.values:
+    if "utc_s" not in recording:
         return None
-    utc_s = recording.values["utc_s"]
+    utc_s = recording.values("utc_s")
     known = valid_fix(recording) & (utc_s > EARLIEST_UTC_S) & (utc_s < LATEST_UTC_S)
     if not known.any():
         return None

@@ -1,10 +1,14 @@
-"""One sensor's data out of a ULog container: needed quantities in SI on clean times."""
+"""One sensor's data out of a ULog container, on clean times, its quantities turned into SI when asked for.
+
+What is written takes half the room of what is decoded, so it stays as it is until its stream is made, and goes then.
+"""
 
 from collections.abc import Iterator, Mapping, Sequence
 from dataclasses import dataclass, replace
 from typing import Any
 
 import numpy as np
+import numpy.typing as npt
 
 from service.domain.arrays import FloatArray
 from service.domain.errors import InputTooLarge
@@ -14,23 +18,60 @@ from service.readers.ulog_fields import ALL_TOPICS, SAMPLE_TIME, TIME, LogField,
 LONGEST_TRANSPORT_S = 1.0
 """A sampling time farther than this from the time of writing is garbage: the time of writing counts."""
 
+RawArray = npt.NDArray[Any]
+
 
 @dataclass(frozen=True, slots=True)
 class Recording:
-    """What one instance of a sensor recorded, each array (n,). Times are finite, strictly increasing once ordered."""
+    """What one instance of a sensor recorded: n samples, in strictly increasing time once ordered."""
 
     topic: Topic
     instance: int
     time_s: FloatArray
-    """Since the recorder started."""
-    values: Mapping[str, FloatArray]
-    """Quantity of the table -> values in SI; quantities that the log does not carry are absent."""
+    """(n,) since the recorder started."""
+    raw: Mapping[str, tuple[RawArray, LogField]]
+    """Quantity of the table -> as written, and how it becomes SI; quantities that the log lacks are absent."""
+    order: RawArray | None = None
+    """Picks the n samples out of the raw arrays; None: all, as they stand."""
     steps_back: int = 0
     impossible_times: int = 0
 
+    def __contains__(self, quantity: str) -> bool:
+        return quantity in self.raw
+
+    def values(self, quantity: str, part: slice = slice(None)) -> FloatArray:
+        """(n,) of a quantity, or a part of it, in SI.
+
+        Raises
+        ------
+        KeyError
+            The log does not carry it.
+        """
+        array, field = self.raw[quantity]
+        return in_si(array[part] if self.order is None else array[self.order[part]], field)
+
+    def renamed(self, quantity: str, name: str) -> "Recording":
+        """The same recording with one of its quantities alone, under another name."""
+        return replace(self, raw={name: self.raw[quantity]})
+
+
+def in_si(array: RawArray, field: LogField) -> FloatArray:
+    """What is written, in SI. (n,)"""
+    # damaged numbers may be of any kind; they are sorted out by what is possible
+    with np.errstate(invalid="ignore", over="ignore"):
+        values: FloatArray = array.astype(np.float64)
+        values *= field.scale
+        values += field.offset
+    return values
+
 
 def recordings(topics: list[Any], samples_per_stream: int) -> list[Recording]:
-    """All needed recordings, ordered in time. Empties `topics` as it goes: raw and decoded data never coexist."""
+    """All needed recordings, ordered in time. Empties `topics`.
+
+    Raises
+    ------
+    InputTooLarge
+    """
     found = list(_decoded(topics, samples_per_stream))
     reference_s = float(np.median([np.median(r.time_s) for r in found])) if found else 0.0
     return [_ordered(_plausible(recording, reference_s)) for recording in found]
@@ -40,35 +81,31 @@ def _decoded(topics: list[Any], samples_per_stream: int) -> Iterator[Recording]:
     by_name = {topic.name: topic for topic in ALL_TOPICS}
     topics.reverse()
     while topics:
-        raw = topics.pop()
-        count = len(raw.data[TIME.name])
+        written = topics.pop()
+        count = len(written.data[TIME.name])
         if count > samples_per_stream:
             raise InputTooLarge(f"A stream of the log has {count} samples; the limit is {samples_per_stream}.")
-        yield _decode(by_name[raw.name], int(raw.multi_id), raw.data)
+        topic, instance = by_name[written.name], int(written.multi_id)
+        time_s, raw = _times(written.data), _present(topic, written.data)
+        del written
+        yield Recording(topic, instance, time_s, raw)
 
 
-def _decode(topic: Topic, instance: int, data: Mapping[str, Any]) -> Recording:
-    values = {}
-    for quantity, variants in topic.fields.items():
-        present = next((field for field in variants if field.name in data), None)
-        if present is not None:
-            values[quantity] = _si(data, present)
-    return Recording(topic, instance, _times(data), values)
+def _present(topic: Topic, data: Mapping[str, RawArray]) -> dict[str, tuple[RawArray, LogField]]:
+    chosen = {
+        quantity: next((field for field in variants if field.name in data), None)
+        for quantity, variants in topic.fields.items()
+    }
+    # copies: views would keep the whole messages, most of whose fields nobody needs
+    return {quantity: (np.array(data[field.name]), field) for quantity, field in chosen.items() if field is not None}
 
 
-def _si(data: Mapping[str, Any], field: LogField) -> FloatArray:
-    values = data[field.name].astype(np.float64)
-    values *= field.scale
-    values += field.offset
-    return values  # type: ignore[no-any-return]
-
-
-def _times(data: Mapping[str, Any]) -> FloatArray:
+def _times(data: Mapping[str, RawArray]) -> FloatArray:
     """When the data were sampled, or written where that is unknown. (n,) [s]"""
-    written = _si(data, TIME)
+    written = in_si(data[TIME.name], TIME)
     if SAMPLE_TIME.name not in data:
         return written
-    sampled = _si(data, SAMPLE_TIME)
+    sampled = in_si(data[SAMPLE_TIME.name], SAMPLE_TIME)
     return np.where(np.abs(sampled - written) <= LONGEST_TRANSPORT_S, sampled, written)
 
 
@@ -77,7 +114,8 @@ def _plausible(recording: Recording, reference_s: float) -> Recording:
     keep = np.abs(recording.time_s - reference_s) <= MAXIMUM_SPAN_S / 2
     if keep.all():
         return recording
-    return replace(_picked(recording, keep), impossible_times=int(np.count_nonzero(~keep)))
+    kept = np.flatnonzero(keep)
+    return replace(recording, time_s=recording.time_s[kept], order=kept, impossible_times=int(keep.size - kept.size))
 
 
 def _ordered(recording: Recording) -> Recording:
@@ -88,12 +126,8 @@ def _ordered(recording: Recording) -> Recording:
     order = np.argsort(recording.time_s, kind="stable")
     time_s = recording.time_s[order]
     first = np.concatenate([[True], np.diff(time_s) > 0.0])
-    return replace(_picked(recording, order[first]), steps_back=int(np.count_nonzero(steps < 0.0)))
-
-
-def _picked(recording: Recording, choice: np.typing.NDArray[Any]) -> Recording:
-    values = {quantity: array[choice] for quantity, array in recording.values.items()}
-    return replace(recording, time_s=recording.time_s[choice], values=values)
+    picked = order[first] if recording.order is None else recording.order[order[first]]
+    return replace(recording, time_s=time_s[first], order=picked, steps_back=int(np.count_nonzero(steps < 0.0)))
 
 
 def of_topics(found: Sequence[Recording], topics: tuple[Topic, ...]) -> list[Recording]:

@@ -1,8 +1,8 @@
 """When the aircraft stood on the ground: needed for the zero offset, for silence of warnings, and to keep it out of fits.
 
 Rest is judged by GPS speed at the start or the end of the log, or by the recorder's own ground contact; rolling lasts
-from rest until the aircraft has climbed off its resting height. An aircraft that hangs in a strong headwind has no ground
-speed either: rest must therefore touch an end of the log, or last long at an unmoving height.
+from rest until the aircraft has climbed off its resting height. An aircraft that hangs in a strong headwind has no
+ground speed either: rest must therefore touch an end of the log, or last long at an unmoving height.
 """
 
 from dataclasses import dataclass
@@ -62,6 +62,8 @@ def _speed_and_height(log: DecodedLog, gps: GpsSamples) -> tuple[FloatArray, Flo
         windows = np.lib.stride_tricks.sliding_window_view(np.pad(speed, 2, mode="edge"), 5)
         speed = np.median(windows, axis=1)
     height = np.full(time_s.size, np.nan)
+    if time_s.size == 0:
+        return time_s, speed, height
     if log.static is not None and np.isfinite(log.static.static_pressure_pa).sum() > 2:
         known = np.isfinite(log.static.static_pressure_pa)
         pressure = np.interp(time_s, log.static.time_s[known], log.static.static_pressure_pa[known])

@@ -1,7 +1,7 @@
 """Faults of the sensors, with the time for which they hold.
 
-`find_faults` looks before the fit, when no wind is known; `find_scale_step` looks after a first fit, which a leak needs.
-To add a fault: write a module with one function `FlightEvidence -> list[Finding]` and put it into the list of `find.py`.
+`find_faults` looks before the fit, when no wind is known; `find_scale_step` after a first fit, which a leak needs.
+To add a fault: write a module with one function `FlightEvidence -> list[Finding]`, put it into the list of `find.py`.
 """
 
 from service.reduction.faults.find import CHECKS, find_faults

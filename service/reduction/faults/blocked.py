@@ -1,4 +1,4 @@
-"""Blocked with the drain open: in flight the reading lies at its zero, where even the least sensitive probe would show air.
+"""Blocked with the drain open: in flight the reading lies at its zero, where the least sensitive probe would show air.
 
 This is the plain case, where the zero is known. A raw sensor that was never at rest is left to `no_airflow`.
 """
@@ -29,8 +29,8 @@ LONGEST_RETURN_S = 2.0
 def blocked_message(start_s: float, end_s: float) -> str:
     """What is told of a blocked probe, by whichever check it was found."""
     return (
-        f"The probe reads no airflow from {start_s:.1f} s to {end_s:.1f} s in flight. Its ram hole is most likely blocked "
-        "(insect, ice, water, a cover left on) or its total tube is off: clear it and blow-test it before flying."
+        f"The probe reads no airflow from {start_s:.1f} s to {end_s:.1f} s in flight. Its ram hole is most likely "
+        "blocked (insect, ice, water, a cover left on) or its total tube is off: clear it, blow-test it before flying."
     )
 
 

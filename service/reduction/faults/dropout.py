@@ -47,6 +47,6 @@ def _gaps_told(evidence: FlightEvidence) -> FloatArray:
     kept = []
     for start_s, end_s in spans:
         low, high = np.searchsorted(time_s, [start_s, end_s])
-        if 0 < low and high < time_s.size and high - low < 0.5 * (end_s - start_s) / evidence.interval_s:
+        if low > 0 and high < time_s.size and high - low < 0.5 * (end_s - start_s) / evidence.interval_s:
             kept.append((start_s, end_s))
     return np.array(kept).reshape(-1, 2)

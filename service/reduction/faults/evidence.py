@@ -1,9 +1,9 @@
-"""What the checks look at: the readings, when the aircraft flew, what the zero is, and what GPS says of the airspeed."""
+"""What the checks look at: the readings, when the aircraft flew, what the zero is, what GPS says of the airspeed."""
 
 from dataclasses import dataclass, replace
 
 import numpy as np
-from scipy.ndimage import maximum_filter1d
+from scipy.ndimage import maximum_filter1d, minimum_filter1d
 
 from service.airdata.pitot import impact_pressure_from_true_airspeed
 from service.domain.arrays import BoolArray, FloatArray
@@ -37,7 +37,7 @@ class FlightEvidence:
     """Median interval of the probe's samples."""
     airborne: BoolArray
     moving: BoolArray
-    """Airborne, and moving over the ground at some time within five seconds: a landed aircraft is not."""
+    """Airborne, and moving over the ground but for some seconds against a strong wind: a landed aircraft is not."""
     expected_pa: FloatArray
     """Dynamic pressure by GPS and a rough wind; without circles by ground speed alone. NaN without GPS."""
     wind_known: bool
@@ -87,8 +87,9 @@ def _moves(series: AirDataSeries) -> BoolArray:
         return np.zeros(series.time_s.size, dtype=bool)
     ground_speed = np.hypot(series.velocity_north_mps, series.velocity_east_mps)
     width = 2 * max(round(MOVING_WITHIN_S / max(float(np.median(np.diff(time_s))), 1e-3)), 1) + 1
-    fastest = maximum_filter1d(ground_speed, width, mode="nearest")
-    return np.asarray(np.interp(series.time_s, time_s, fastest) > MOVING_MPS)
+    # A closing: fills slow stretches between fast ones, but reaches not beyond the last of them.
+    closed = minimum_filter1d(maximum_filter1d(ground_speed, width, mode="nearest"), width, mode="nearest")
+    return np.asarray(np.interp(series.time_s, time_s, closed) > MOVING_MPS)
 
 
 def _zero(series: AirDataSeries) -> KnownZero | None:

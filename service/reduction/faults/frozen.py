@@ -9,7 +9,7 @@ from service.reduction.faults.finding import Finding, only, probe_finding
 from service.reduction.faults.held_values import held_runs
 
 USUAL_RUNS = 6.0
-"""A frozen run is this many times as long as 95 % of the flight's runs."""
+"""A frozen run is this many times as long as 95 % of the flight's runs, and half as many times as the longest usual."""
 FEWEST_SAMPLES = 5
 SHORTEST_S = 3.0
 
@@ -19,7 +19,9 @@ def find_frozen(evidence: FlightEvidence) -> list[Finding]:
     time_s = evidence.series.time_s
     flying = np.flatnonzero(np.isfinite(evidence.reading_pa) & evidence.airborne)
     held = held_runs(evidence.reading_pa[flying])
-    fewest = max(USUAL_RUNS * held.usual_length, FEWEST_SAMPLES)
+    if held.coarse:
+        return []
+    fewest = max(held.unusual_length(USUAL_RUNS), FEWEST_SAMPLES)
     findings = []
     for index in np.flatnonzero(held.length >= fewest).tolist():
         first, last = flying[held.first[index]], flying[held.first[index] + held.length[index] - 1]
@@ -27,8 +29,8 @@ def find_frozen(evidence: FlightEvidence) -> list[Finding]:
             continue
         first, last = _to_the_ground(evidence.reading_pa, int(first), int(last))
         message = (
-            f"The reading stays at exactly {held.value[index]:.2f} Pa from {time_s[first]:.1f} s to {time_s[last]:.1f} s "
-            "in flight, where air never stands still. The sensor or its data line had stopped; "
+            f"The reading stays at exactly {held.value[index]:.2f} Pa from {time_s[first]:.1f} s to "
+            f"{time_s[last]:.1f} s in flight, where air never stands still. The sensor or its data line had stopped; "
             "power-cycle and test it on the ground before flying."
         )
         findings.append(probe_finding(FaultKind.FROZEN, time_s, only(time_s.size, first, last + 1), message))

@@ -1,4 +1,4 @@
-"""Frozen static: the static pressure stands still while GPS climbs, or repeats one value longer than rounding explains."""
+"""Frozen static: the pressure stands still while GPS climbs, or repeats one value longer than rounding explains."""
 
 import numpy as np
 
@@ -27,8 +27,8 @@ def find_frozen_static(evidence: FlightEvidence) -> list[Finding]:
     for start_s, end_s, pressure_pa in _held_spans(static, series):
         spoiled = (series.time_s >= start_s) & (series.time_s <= end_s)
         message = (
-            f"The static pressure stays at exactly {pressure_pa:.1f} Pa from {start_s:.1f} s to {end_s:.1f} s in flight. "
-            "Altitude and density are unknown there; check the static sensor and its port."
+            f"The static pressure stays at exactly {pressure_pa:.1f} Pa from {start_s:.1f} s to {end_s:.1f} s "
+            "in flight. Altitude and density are unknown there; check the static sensor and its port."
         )
         fault = Fault(FaultKind.FROZEN_STATIC, "static", start_s, end_s, message)
         findings.append(Finding(fault, np.zeros(spoiled.size, dtype=bool), spoiled))
@@ -43,7 +43,7 @@ def _held_spans(static: StaticSamples, series: AirDataSeries) -> list[tuple[floa
     start_s, end_s = time_s[held.first], time_s[held.first + held.length - 1]
     flown_s = _flown_seconds(series, start_s, end_s)
     long = (held.length >= FEWEST_SAMPLES) & (flown_s >= SHORTEST_S)
-    beyond_rounding = (held.length.size >= FEWEST_RUNS) & (held.length >= USUAL_RUNS * held.usual_length)
+    beyond_rounding = (held.length.size >= FEWEST_RUNS) & (held.length >= held.unusual_length(USUAL_RUNS))
     spans = []
     for index in np.flatnonzero(long).tolist():
         climb = _climb_m(series, start_s[index], end_s[index])
@@ -57,7 +57,7 @@ def _flown_seconds(series: AirDataSeries, start_s: FloatArray, end_s: FloatArray
     if series.time_s.size < 2:
         return np.zeros(start_s.size)
     flown = np.concatenate([[0.0], np.cumsum(np.diff(series.time_s) * ~series.on_ground[1:])])
-    return np.interp(end_s, series.time_s, flown) - np.interp(start_s, series.time_s, flown)
+    return np.asarray(np.interp(end_s, series.time_s, flown) - np.interp(start_s, series.time_s, flown))
 
 
 def _climb_m(series: AirDataSeries, start_s: float, end_s: float) -> float:

@@ -1,8 +1,125 @@
-"""Leak: the pressure scale steps in mid-flight. Looked for after a first fit, which knows wind and scale."""
+"""Leak: from one moment on, or for a span, the probe reads a smaller share of the pressure.
 
-from service.domain.results import Fault, FitResult, FittedPoints, Loiter
+Looked for after a first fit, which knows wind and scale, by signs that must agree on the size of the step:
+
+- the level: probe airspeed over wind-corrected ground speed is lower inside the span than outside (`scale_levels`);
+- the edges: a leak opens at once, and within tenths of a second a gust changes little (`reading_edges`).
+
+Each is a measure of the same step with its own variance; they are averaged by their weights and held against the
+largest such mean that gusts alone make in one of a thousand flights or fewer (simulated sound flights).
+"""
+
+from dataclasses import dataclass
+
+import numpy as np
+
+from service.domain.arrays import BoolArray, FloatArray
+from service.domain.codes import FaultKind
+from service.domain.results import AirDataSeries, Fault, FitResult, FittedPoints, Loiter
+from service.reduction.faults.reading_edges import Edges, edges_of_reading, extreme_in_bins
+from service.reduction.faults.scale_levels import levels_of_spans
+
+FEWEST_POINTS = 24
+ONE_EDGE = 5.5
+TWO_EDGES = 6.5
+"""Deviations at which a step is told: of a leak that stays, and of one that closes again, which has more ways to be."""
+LEAST_LEVEL = 2.0
+"""Deviations that the level alone must show."""
+LARGEST_DISAGREEMENT = 9.0
+"""Chi-square of level and edges about their mean."""
+LEAST_STEP = 0.02
+"""Of speed: smaller ones are not worth a word."""
 
 
-def find_scale_step(points: FittedPoints, loiters: tuple[Loiter, ...], fit: FitResult) -> Fault | None:
-    """The span of flight that fits another scale than the rest, if any."""
-    return None
+@dataclass(frozen=True, slots=True)
+class _Measure:
+    """A measure of the step: values and weights (1 / variance), 0 where there is none; broadcast to (k + 1, k + 1)."""
+
+    value: FloatArray
+    weight: FloatArray
+    time_s: FloatArray
+
+
+def find_scale_step(
+    points: FittedPoints,
+    loiters: tuple[Loiter, ...],
+    fit: FitResult,
+    *,
+    series: AirDataSeries | None = None,
+    usable: BoolArray | None = None,
+) -> Fault | None:
+    """The span in which the probe reads a smaller share of the pressure than in the rest of the flight, if any.
+
+    Parameters
+    ----------
+    points : of the fit.
+    series, usable : the readings, and (n,) those that may be looked at; without them the edges are not seen, and only
+        the level speaks.
+    """
+    if points.time_s.size < FEWEST_POINTS or not loiters:
+        return None
+    levels = levels_of_spans(points)
+    delay_s = fit.gps_delay_s.value if fit.gps_delay_s is not None else 0.0
+    time_s = levels.points.time_s - delay_s
+    edges = _edges(series, usable, fit)
+    opening, closing = _edge_measure(edges, time_s, -1.0), _edge_measure(edges, time_s, 1.0)
+    found = _likeliest(*levels.between(), opening, closing)
+    if found is None:
+        return None
+    start, end, step = found
+    start_s = loiters[0].start_s if start == 0 else _time_of(opening, time_s, start)
+    end_s = loiters[-1].end_s if end == time_s.size else _time_of(closing, time_s, end)
+    message = (
+        f"From {start_s:.1f} s to {end_s:.1f} s the probe reads {100 * -np.expm1(2 * step):.0f} % less pressure than in "
+        "the rest of the flight at the same airspeed. A leak, water or dirt in the lines is likely: test them."
+    )
+    return Fault(FaultKind.LEAK, "probe", start_s, end_s, message)
+
+
+def _edges(series: AirDataSeries | None, usable: BoolArray | None, fit: FitResult) -> Edges:
+    if series is None:
+        return Edges(np.empty(0), np.empty(0), np.empty(0))
+    chosen = np.isfinite(series.reading_pa) & ~series.on_ground
+    if usable is not None:
+        chosen &= usable
+    return edges_of_reading(series.time_s[chosen], series.reading_pa[chosen] - fit.zero_offset_pa)
+
+
+def _edge_measure(edges: Edges, time_s: FloatArray, sign: float) -> _Measure:
+    """The strongest edge of a sign between each two neighbouring points, as a measure of the step at that boundary."""
+    count = time_s.size + 1
+    best = extreme_in_bins(edges, np.searchsorted(time_s, edges.time_s), count, sign)
+    value, weight, moment = np.zeros(count), np.zeros(count), np.full(count, np.nan)
+    seen = best >= 0
+    seen[[0, -1]] = False
+    value[seen], moment[seen] = -sign * edges.step[best[seen]], edges.time_s[best[seen]]
+    weight[seen] = 1.0 / edges.deviation[best[seen]] ** 2
+    return _Measure(value, weight, moment)
+
+
+def _likeliest(
+    level: FloatArray, variance: FloatArray, opening: _Measure, closing: _Measure
+) -> tuple[int, int, float] | None:
+    """Boundaries and size of the most significant step down, if it is significant."""
+    measures = (
+        (level, 1.0 / variance),
+        (opening.value[:, None], opening.weight[:, None]),
+        (closing.value[None, :], closing.weight[None, :]),
+    )
+    weight = sum((w for _, w in measures), np.zeros_like(level))
+    mean = sum((v * w for v, w in measures), np.zeros_like(level)) / np.maximum(weight, 1e-12)
+    disagreement = sum(((v - mean) ** 2 * w for v, w in measures), np.zeros_like(level))
+    told = np.isfinite(variance) & (mean < -LEAST_STEP) & (disagreement < LARGEST_DISAGREEMENT)
+    told &= level < -LEAST_LEVEL * np.sqrt(np.where(np.isfinite(variance), variance, 0.0))
+    significance = np.where(told, -mean * np.sqrt(weight), 0.0)
+    stays = np.zeros_like(told)
+    stays[0, :] = stays[:, -1] = True
+    excess = significance / np.where(stays, ONE_EDGE, TWO_EDGES)
+    start, end = np.unravel_index(int(np.argmax(excess)), excess.shape)
+    return (int(start), int(end), float(mean[start, end])) if excess[start, end] >= 1.0 else None
+
+
+def _time_of(measure: _Measure, time_s: FloatArray, boundary: int) -> float:
+    """Time of the edge at a boundary, else the middle between its points. [s]"""
+    edge = float(measure.time_s[boundary])
+    return edge if np.isfinite(edge) else float(0.5 * (time_s[boundary - 1] + time_s[boundary]))

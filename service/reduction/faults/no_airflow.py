@@ -39,7 +39,7 @@ FEWEST_WINDOWS = 30
 WHOLE_FLIGHT_SHARE = 0.002
 """Of the dynamic pressure by GPS: a whole flight that varies less than this senses no air."""
 MOST_MISSING = 0.2
-LEAST_CONTRAST = 2.0
+LEAST_CONTRAST, MOST_CONTRAST = 2.0, 100.0
 MOST_MISFIT = 12.0
 """Of one block, half its square: a lone outlier does not end a span."""
 SLOPE_DEVIATIONS = 6.0
@@ -50,11 +50,13 @@ SINK_NOISE = 3.0
 SINK_PER_BLOCK = 1.3
 """A drained line that sinks with a time constant below 3 s is this much nearer to its end after each second."""
 NOTHING_SHARE = 0.1
+FEWEST_ELSEWHERE = 10
+"""Blocks outside of a span that tell the usual reading."""
 
 
 @dataclass(frozen=True, slots=True)
 class _Windows:
-    """Sliding windows of `length` blocks, each array (k - length + 1,): the regression of reading on static pressure."""
+    """Sliding windows of `length` blocks, each array (k - length + 1,): reading regressed on static pressure."""
 
     length: int
     valid: BoolArray
@@ -83,7 +85,7 @@ class _Still:
 
 
 def find_no_airflow(evidence: FlightEvidence) -> list[Finding]:
-    """Spans in flight without gusts in the reading: trapped if it follows the altitude, blocked if it fell to a level."""
+    """Spans in flight without gusts in the reading: trapped if it follows the altitude, blocked if it fell."""
     if evidence.series.time_s.size < min(length for length, _ in WINDOWS):
         return []
     blocks = second_blocks(evidence)
@@ -101,14 +103,14 @@ def _finding(time_s: FloatArray, kind: FaultKind, samples: BoolArray) -> Finding
     if kind is FaultKind.BLOCKED:
         return probe_finding(kind, time_s, samples, blocked_message(start_s, end_s))
     message = (
-        f"The reading shows no gusts and follows the altitude from {start_s:.1f} s to {end_s:.1f} s: ram hole and drain "
-        "are most likely blocked and hold the pressure of that moment. Clear the probe and blow-test it before flying."
+        f"The reading shows no gusts and follows the altitude from {start_s:.1f} s to {end_s:.1f} s: ram hole and "
+        "drain are most likely blocked and hold the pressure of that moment. Clear and blow-test the probe."
     )
     return probe_finding(kind, time_s, samples, message)
 
 
 def _kind(evidence: FlightEvidence, blocks: SecondBlocks, still: _Still) -> FaultKind | None:
-    """None where the air was only quiet: the reading neither follows the altitude nor fell to a level that air explains not."""
+    """None where the air was only quiet: the reading neither follows the altitude nor fell."""
     inside = slice(still.first, still.last)
     scatter = float(np.nanvar(blocks.reading_pa[inside]))
     follows = -still.slope > SLOPE_DEVIATIONS * still.slope_uncertainty
@@ -124,10 +126,11 @@ def _kind(evidence: FlightEvidence, blocks: SecondBlocks, still: _Still) -> Faul
 
 
 def _usual_level(blocks: SecondBlocks, but: slice) -> float:
-    """Median reading in flight outside of `but`; NaN where there is none."""
+    """Median reading in flight outside of `but`; NaN where there is next to none."""
     elsewhere = blocks.airborne & np.isfinite(blocks.reading_pa)
     elsewhere[but] = False
-    return float(np.median(blocks.reading_pa[elsewhere])) if elsewhere.any() else np.nan
+    enough = elsewhere.sum() >= FEWEST_ELSEWHERE
+    return float(np.median(blocks.reading_pa[elsewhere])) if enough else np.nan
 
 
 def _quiet(blocks: SecondBlocks) -> BoolArray:
@@ -175,7 +178,10 @@ def _scan(blocks: SecondBlocks, length: int) -> _Windows:
         noise_pa2=noise + slope**2 * blocks.static_noise_pa2,
         white=0.5 * np.mean(steps**2, axis=1) / np.maximum(square / length, 1e-12),
         # Taking out mean and slope leaves white noise a covariance of -2 / length of its variance.
-        excess_pa2=np.mean(rest[:, 1:] * rest[:, :-1], axis=1) + 2.0 * variance / length,
+        # The static pressure is a mean of two blocks: half of its noise is its neighbour's too.
+        excess_pa2=np.mean(rest[:, 1:] * rest[:, :-1], axis=1)
+        + 2.0 * variance / length
+        - 0.5 * slope**2 * blocks.static_noise_pa2,
     )
 
 
@@ -201,7 +207,7 @@ def _still_flight(blocks: SecondBlocks, windows: _Windows) -> BoolArray:
     """All valid windows, if not even all of them together hold anything but noise."""
     if windows.valid.sum() < FEWEST_WINDOWS:
         return np.zeros(windows.valid.size, dtype=bool)
-    excess = float(np.mean(windows.excess_pa2[windows.valid]))
+    excess = float(np.median(windows.excess_pa2[windows.valid]))
     expected = float(np.median(blocks.expected_pa[blocks.airborne]))
     still = expected > 0.0 and excess < (WHOLE_FLIGHT_SHARE * expected) ** 2
     return windows.valid if still else np.zeros(windows.valid.size, dtype=bool)
@@ -218,11 +224,11 @@ def _fitted(blocks: SecondBlocks, first: int, last: int) -> _Still:
 
 
 def _usual_step(blocks: SecondBlocks, but: slice) -> float:
-    """Root mean square step from block to block in flight outside of `but`, outliers apart. [Pa]"""
+    """Root mean square step from block to block in flight outside of `but`, outliers apart; infinite if too few."""
     step = np.diff(np.where(blocks.airborne, blocks.reading_pa, np.nan))
     step[but] = np.nan
     step = step[np.isfinite(step)]
-    return float(np.sqrt(np.median(step**2) / MEDIAN_OF_CHI_SQUARE)) if step.size else 0.0
+    return float(np.sqrt(np.median(step**2) / MEDIAN_OF_CHI_SQUARE)) if step.size >= FEWEST_ELSEWHERE else np.inf
 
 
 def _regressed(blocks: SecondBlocks, first: int, last: int) -> _Still:
@@ -242,7 +248,7 @@ def _regressed(blocks: SecondBlocks, first: int, last: int) -> _Still:
 def _edges(blocks: SecondBlocks, still: _Still, usual_step_pa: float) -> tuple[int, int]:
     """The likeliest first and last block: each scores the log-likelihood of noise about the span's own level and slope
     over that of a gust's step from its neighbour."""
-    gain = np.log(max(usual_step_pa / still.deviation_pa, LEAST_CONTRAST))
+    gain = np.log(np.clip(usual_step_pa / still.deviation_pa, LEAST_CONTRAST, MOST_CONTRAST))
     score = gain - np.minimum(0.5 * still.misfit(blocks) ** 2, MOST_MISFIT)
     score = np.where(blocks.airborne, np.nan_to_num(score, nan=0.0), -np.inf)
     middle = (still.first + still.last) // 2

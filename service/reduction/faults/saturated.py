@@ -10,7 +10,7 @@ from service.reduction.faults.held_values import held_runs
 
 AT_FULL_SCALE = 0.999
 FEWEST_SAMPLES = 3
-USUAL_RUNS = 4.0
+USUAL_RUNS = 3.0
 """A plateau at the flight's own extreme is this many times as long as 95 % of its other runs."""
 LONGEST_LONE_PLATEAU_S = 3.0
 FEWEST_OTHER_VALUES = 10
@@ -27,8 +27,8 @@ def find_saturated(evidence: FlightEvidence) -> list[Finding]:
     for first, last in episodes(time_s, at_limit, JOIN_S):
         limit = float(evidence.reading_pa[first])
         message = (
-            f"The reading is cut off at {limit:.1f} Pa between {time_s[first]:.1f} s and {time_s[last - 1]:.1f} s: "
-            "the sensor's range ends there and the true pressure is larger. Use a sensor with a wider range, or fly slower."
+            f"The reading is cut off at {limit:.1f} Pa between {time_s[first]:.1f} s and {time_s[last - 1]:.1f} s: the "
+            "sensor's range ends there and the true pressure is larger. Use a sensor with a wider range, or fly slower."
         )
         findings.append(probe_finding(FaultKind.SATURATED, time_s, only(time_s.size, first, last), message))
     return findings
@@ -49,13 +49,13 @@ def _at_own_extreme(evidence: FlightEvidence, sign: float) -> BoolArray:
     reading: FloatArray = sign * evidence.reading_pa[flying]
     limit = float(reading.max())
     held = held_runs(reading)
-    at_top = held.value >= limit
-    if reading.size - held.length[at_top].sum() < FEWEST_OTHER_VALUES:
+    at_top = np.maximum.reduceat(reading, held.first) >= limit
+    if held.coarse or reading.size - held.length[at_top].sum() < FEWEST_OTHER_VALUES:
         return limit_hit
-    plateau = held.length[at_top] >= max(FEWEST_SAMPLES, USUAL_RUNS * held.usual_length)
+    plateau = held.length[at_top] >= max(FEWEST_SAMPLES, held.unusual_length(USUAL_RUNS))
     seconds = float(held.length[at_top].max()) * evidence.interval_s
     # One long plateau that is never met again is a frozen reading that happened to be the largest.
     if not plateau.any() or (at_top.sum() == 1 and seconds > LONGEST_LONE_PLATEAU_S):
         return limit_hit
-    limit_hit[flying[reading >= limit]] = True
+    limit_hit[flying[reading >= limit - held.tolerance]] = True
     return limit_hit

@@ -59,7 +59,7 @@ def _spiky(reading: FloatArray) -> BoolArray:
 
 
 def _off_both_sides(reading: FloatArray, neighbours: FloatArray) -> FloatArray:
-    """(n,) how far each sample lies outside the medians of its neighbours before and after; 0 between them, as in a step."""
+    """(n,) how far each sample lies outside the medians of its neighbours before and after; 0 between them."""
     before = reading - np.median(neighbours[:, :NEIGHBOURS], axis=1)
     after = reading - np.median(neighbours[:, NEIGHBOURS:], axis=1)
     return np.where(before * after > 0.0, np.minimum(np.abs(before), np.abs(after)), 0.0)

@@ -15,6 +15,8 @@ JOIN_S = 5.0
 SHORTEST_S = 4.0
 WHOLE_SHARE = 0.8
 """From this share of the flight on, a negative reading may be a negative raw zero: how it moves must then decide."""
+PART_SHARE = 0.2
+"""From this share on, a reading that moves against the airspeed is swapped throughout: no tube is changed in flight."""
 
 
 def find_swapped(evidence: FlightEvidence) -> list[Finding]:
@@ -43,18 +45,21 @@ def _below_zero(evidence: FlightEvidence) -> BoolArray:
     zero_pa = evidence.zero.value_pa if evidence.zero else 0.0
     reading = _smoothed(evidence.reading_pa[where] - zero_pa, evidence.interval_s)
     low = reading < -LEAST_SHARE * evidence.expected_pa[where]
-    if evidence.zero is None and low.mean() > WHOLE_SHARE and not _moves_against(reading, evidence.expected_pa[where]):
-        return below
+    if evidence.zero is None:
+        low = _judged_by_motion(low, reading, evidence.expected_pa[where])
     below[where[low]] = True
     return below
 
 
-def _moves_against(reading: FloatArray, expected: FloatArray) -> bool:
-    """Whether the reading falls when the airspeed by GPS rises."""
+def _judged_by_motion(low: BoolArray, reading: FloatArray, expected: FloatArray) -> BoolArray:
+    """What is swapped where no zero is known: all if the reading falls as the airspeed by GPS rises, else a part."""
     known = np.isfinite(expected)
-    return bool(
-        known.sum() > 2 and np.mean((reading - reading[known].mean()) * (expected - expected[known].mean())) < 0.0
+    moves = (
+        (reading[known] - reading[known].mean()) * (expected[known] - expected[known].mean()) if known.any() else [0.0]
     )
+    if np.mean(moves) < 0.0 and low.mean() > PART_SHARE:
+        return np.ones(low.size, dtype=bool)
+    return low if low.mean() < WHOLE_SHARE else np.zeros(low.size, dtype=bool)
 
 
 def _smoothed(values: FloatArray, interval_s: float) -> FloatArray:

@@ -25,7 +25,11 @@ START_UTC = datetime(2026, 5, 4, 9, 12, tzinfo=UTC)
 
 def circling_log(duration_s: float = 60.0, rate_hz: float = 10.0) -> DecodedLog:
     """A log whose streams have rates of their own; the first sample of all is the probe's, at zero."""
-    probe_s, static_s, gps_s = times(duration_s, rate_hz), times(duration_s, rate_hz / 2), times(duration_s, rate_hz / 2)
+    probe_s, static_s, gps_s = (
+        times(duration_s, rate_hz),
+        times(duration_s, rate_hz / 2),
+        times(duration_s, rate_hz / 2),
+    )
     slow_s, fast_s = times(duration_s, 1.0), times(duration_s, 2 * rate_hz)
     track = np.radians(12.0 * gps_s)
     speed = 15.0 * airborne(gps_s, duration_s)
@@ -36,7 +40,9 @@ def circling_log(duration_s: float = 60.0, rate_hz: float = 10.0) -> DecodedLog:
         start_utc=START_UTC,
         truncated=False,
         time_steps_back=0,
-        probe=ProbeSamples(probe_s, 2.0 + 138.0 * airborne(probe_s, duration_s) + np.sin(7.0 * probe_s), "probe", False),
+        probe=ProbeSamples(
+            probe_s, 2.0 + 138.0 * airborne(probe_s, duration_s) + np.sin(7.0 * probe_s), "probe", False
+        ),
         static=StaticSamples(static_s, 99000.0 - 500.0 * np.sin(static_s / 30.0), "static"),
         temperature=TemperatureSamples(slow_s, 284.0 + 0.01 * slow_s, None, "air", 2.0),
         gps=GpsSamples(

@@ -1,0 +1,60 @@
+"""Edges of the reading: steps of the airspeed within tenths of a second, where gusts change little."""
+
+from dataclasses import dataclass
+
+import numpy as np
+from scipy.ndimage import median_filter
+
+from service.domain.arrays import FloatArray, IntArray
+
+SIDES = (1, 2, 3, 5)
+"""Samples averaged on either side of an edge; the number that scatters least is taken."""
+FEWEST_PER_SIDE = 50
+SCATTER_WINDOW_S = 30.0
+DEVIATION_TO_SIGMA = 1.4826
+LARGEST_STRETCH = 1.5
+"""An edge across a gap in time is none."""
+LEAST_SPEED_SHARE = 0.05
+"""Readings that give less than this share of the usual airspeed have no logarithm worth looking at."""
+
+
+@dataclass(frozen=True, slots=True)
+class Edges:
+    """Between samples, each array (m,)."""
+
+    time_s: FloatArray
+    step: FloatArray
+    """Of the logarithm of the airspeed."""
+    deviation: FloatArray
+    """Standard deviation of such steps by gusts and noise, there."""
+
+
+def edges_of_reading(time_s: FloatArray, pressure_pa: FloatArray) -> Edges:
+    """Edges of (n,) readings above zero, all usable, in flight; none where there are too few."""
+    log_speed = 0.5 * np.log(np.maximum(pressure_pa, LEAST_SPEED_SHARE**2 * np.median(np.abs(pressure_pa)) + 1e-9))
+    candidates = [_edges(time_s, log_speed, side) for side in SIDES if time_s.size >= FEWEST_PER_SIDE * side]
+    if not candidates:
+        return Edges(np.empty(0), np.empty(0), np.empty(0))
+    return min(candidates, key=lambda edges: float(np.median(np.abs(edges.step))) if edges.step.size else np.inf)
+
+
+def _edges(time_s: FloatArray, log_speed: FloatArray, side: int) -> Edges:
+    total = np.concatenate([[0.0], np.cumsum(log_speed)])
+    mean = (total[side:] - total[:-side]) / side
+    step = mean[side:] - mean[:-side]
+    middle = 0.5 * (time_s[side : time_s.size - side + 1] + time_s[side - 1 : time_s.size - side])
+    interval_s = float(np.median(np.diff(time_s)))
+    stretch = time_s[2 * side - 1 :] - time_s[: time_s.size - 2 * side + 1]
+    whole = stretch <= LARGEST_STRETCH * max(2 * side - 1, 1) * interval_s
+    usual = DEVIATION_TO_SIGMA * float(np.median(np.abs(step)))
+    width = max(round(SCATTER_WINDOW_S / interval_s), 3) | 1
+    local = DEVIATION_TO_SIGMA * median_filter(np.abs(step), min(width, step.size), mode="nearest")
+    return Edges(middle[whole], step[whole], np.maximum(local, usual)[whole])
+
+
+def extreme_in_bins(edges: Edges, bins: IntArray, count: int, sign: float) -> IntArray:
+    """(count,) index of the edge whose sign times step, in deviations, is largest in each bin; -1 in an empty one."""
+    best = np.full(count, -1, dtype=np.int64)
+    order = np.argsort(sign * edges.step / edges.deviation)
+    best[bins[order]] = order
+    return best

@@ -1,0 +1,117 @@
+"""Level of the scale in any span of the fitted points, and its uncertainty in correlated gusts.
+
+Probe airspeed minus wind-corrected ground speed is compared by generalised least squares with the covariance of a gust
+field frozen in the air mass. The length of the field is chosen by restricted likelihood (Patterson and Thompson,
+Recovery of inter-block information when block sizes are unequal, Biometrika 58 (1971) 545-554); scale and winds of the
+loiters, drift included, are left free.
+"""
+
+from dataclasses import dataclass
+
+import numpy as np
+from scipy import linalg
+
+from service.airdata.gusts import GustGeometry
+from service.domain.arrays import FloatArray
+from service.domain.results import FittedPoints
+
+MOST_POINTS = 160
+LENGTHS_M = (60.0, 200.0, 600.0)
+NOISE_SHARE = 0.03
+"""Of the gust's variance: what GPS and sensor noise leave in a point."""
+LEAST_INFORMATION = 1e-6
+"""Of the largest: a span that holds next to all points, or none, tells no step."""
+
+
+@dataclass(frozen=True, slots=True)
+class Levels:
+    """Level of every span [i, j) of the (k,) points, from the moments of its steps."""
+
+    points: FittedPoints
+    moment: FloatArray
+    """(k + 1,) of the points before each boundary with the residuals."""
+    information: FloatArray
+    """(k + 1, k + 1)"""
+
+    def between(self) -> tuple[FloatArray, FloatArray]:
+        """(k + 1, k + 1) relative step of the speed in the span from boundary i to j > i, and its variance."""
+        diagonal = np.diag(self.information)
+        information = diagonal[:, None] + diagonal[None, :] - 2.0 * self.information
+        upper = np.triu(np.ones_like(information, dtype=bool), 1)
+        upper &= information > LEAST_INFORMATION * information.max()
+        safe = np.where(upper, information, 1.0)
+        return np.where(upper, (self.moment[None, :] - self.moment[:, None]) / safe, 0.0), np.where(
+            upper, 1.0 / safe, np.inf
+        )
+
+
+def levels_of_spans(points: FittedPoints) -> Levels:
+    points = _thinned(points)
+    air, directions = _air_path(points)
+    seconds = float(np.median(np.diff(points.time_s)))
+    speed = points.wind_corrected_speed_mps
+    geometry = GustGeometry(air, directions, float(np.median(speed)) * seconds)
+    residual = points.probe_true_airspeed_mps - speed
+    nuisance = _nuisance(points, directions)
+    best = max((_generalised(geometry, length, residual, nuisance) for length in LENGTHS_M), key=lambda g: g[0])
+    _, projector, variance = best
+    before = np.tri(speed.size + 1, speed.size, -1).T * speed[:, None]
+    weighted = projector @ before / variance
+    return Levels(points, weighted.T @ residual, before.T @ weighted)
+
+
+def _generalised(
+    geometry: GustGeometry, length_m: float, residual: FloatArray, nuisance: FloatArray
+) -> tuple[float, FloatArray, float]:
+    """Restricted log-likelihood, projector that weighs and takes out the nuisance, and the variance of the gust."""
+    covariance = geometry.covariance(length_m) + NOISE_SHARE * np.eye(residual.size)
+    factor = linalg.cho_factor(covariance, lower=True)
+    inverse = linalg.cho_solve(factor, np.eye(residual.size))
+    weighted = inverse @ nuisance
+    gram = nuisance.T @ weighted
+    projector = inverse - weighted @ np.linalg.solve(gram, weighted.T)
+    freedom = residual.size - nuisance.shape[1]
+    variance = float(residual @ projector @ residual) / freedom
+    log_determinants = 2.0 * float(np.sum(np.log(np.diag(factor[0])))) + float(np.linalg.slogdet(gram)[1])
+    return -0.5 * (freedom * np.log(variance) + log_determinants), projector, variance
+
+
+def _nuisance(points: FittedPoints, directions: FloatArray) -> FloatArray:
+    """(k, p) what a wrong scale, and a wrong or drifting wind in each loiter, add to the residuals."""
+    columns = [points.wind_corrected_speed_mps]
+    for loiter in np.unique(points.loiter):
+        inside = points.loiter == loiter
+        time = points.time_s - points.time_s[inside].mean()
+        half = max(float(np.ptp(points.time_s[inside])) / 2.0, 1.0)
+        for shape in (np.ones_like(time), time / half):
+            columns += [inside * shape * directions[:, 0], inside * shape * directions[:, 1]]
+    return np.column_stack(columns)
+
+
+def _air_path(points: FittedPoints) -> tuple[FloatArray, FloatArray]:
+    """Positions in the air mass and unit vectors of the air velocity, both (k, 2) north, east."""
+    heading = np.radians(points.heading_deg)
+    directions = np.column_stack([np.cos(heading), np.sin(heading)])
+    velocity = directions * points.wind_corrected_speed_mps[:, None]
+    step = 0.5 * (velocity[1:] + velocity[:-1]) * np.diff(points.time_s)[:, None]
+    return np.vstack([np.zeros(2), np.cumsum(step, axis=0)]), directions
+
+
+def _thinned(points: FittedPoints) -> FittedPoints:
+    """Neighbours within a loiter joined, until no more than MOST_POINTS are left."""
+    every = -(-points.time_s.size // MOST_POINTS)
+    place = np.arange(points.time_s.size) - np.searchsorted(points.loiter, points.loiter)
+    first = np.flatnonzero(place % every == 0)
+    count = np.diff(np.concatenate([first, [points.time_s.size]]))
+
+    def mean(values: FloatArray) -> FloatArray:
+        return np.asarray(np.add.reduceat(values, first) / count)
+
+    heading = np.radians(points.heading_deg)
+    return FittedPoints(
+        time_s=mean(points.time_s),
+        loiter=points.loiter[first],
+        heading_deg=np.degrees(np.arctan2(mean(np.sin(heading)), mean(np.cos(heading)))),
+        probe_true_airspeed_mps=mean(points.probe_true_airspeed_mps),
+        wind_corrected_speed_mps=mean(points.wind_corrected_speed_mps),
+    )

@@ -201,9 +201,9 @@ class _BoundedULog(ULog):  # type: ignore[misc]
     def is_cut(self) -> bool:
         """Whether the file ends in mid-message, before data that it announces, or where reading had to stop early."""
         reached = max(self._reached, *(header.end for header in self._headers))
-        announced = max(self._appended_offsets, default=0)
+        missing = any(offset >= self._file_bytes for offset in self._appended_offsets)
         leftover = any(header.leftover for header in self._headers)
-        return reached != self._file_bytes or announced > self._file_bytes or leftover
+        return reached != self._file_bytes or missing or leftover
 
     def _MessageHeader(self) -> _Header:  # noqa: N802 - the library's name
         self._headers.append(_Header(self._file, self._file_bytes))

@@ -32,6 +32,8 @@ LONGEST_PATTERN_S = 900.0
 CENTRE_WINDOW_S = 240.0
 LARGEST_GAP_S = 5.0
 ENOUGH_COVERAGE_DEG = 230.0
+CLEAR_CIRCLE_FACTOR = 3.5
+"""Radius over median misfit below which velocities lie on no circle: a normal cloud shows 2 to 3."""
 
 
 def find_loiters(series: AirDataSeries, windows: Sequence[Window] = ()) -> tuple[Loiter, ...]:
@@ -111,7 +113,10 @@ def _circle_centre(north: FloatArray, east: FloatArray) -> tuple[float, float]:
         keep = off <= max(4 * float(np.median(off[keep])), 0.5)
         if keep.sum() < 8:
             break
-    return centre
+    radius = float(np.median(np.hypot(north - centre[0], east - centre[1])))
+    wander = float(np.median(np.abs(np.hypot(north - centre[0], east - centre[1]) - radius)))
+    # a cloud about one velocity (a straight leg) has no centre: its headings are those over ground
+    return centre if radius > CLEAR_CIRCLE_FACTOR * wander else (0.0, 0.0)
 
 
 def _centre_in_time(time_s: FloatArray, north: FloatArray, east: FloatArray) -> FloatArray:

@@ -20,8 +20,8 @@ from service.domain.spans import runs
 
 COMPENSATED_PRIOR_PA = 1.0
 """A probe whose zero was taken before flight (method notes: N(0, 1 Pa))."""
-RAW_PRIOR_PA = 60.0
-"""A raw sensor's zero: offsets of 60 to 120 Pa were seen."""
+RAW_PRIOR_PA = (45.0, 50.0)
+"""Value and uncertainty of a raw sensor's zero: 5 to 50 Pa is common practice, 60 to 120 Pa were seen."""
 GIVEN_PA = 0.5
 """Uncertainty of a given zero offset that says none."""
 FEWEST_SAMPLES = 3
@@ -91,9 +91,9 @@ def zero_offset(
     if rests:
         value, uncertainty = _from_rest(rests, wind)
         return ZeroOffset(value, uncertainty, ZeroOffsetSource.GROUND, True)
-    prior = COMPENSATED_PRIOR_PA if series.compensated_zero else RAW_PRIOR_PA
+    value, prior = (0.0, COMPENSATED_PRIOR_PA) if series.compensated_zero else RAW_PRIOR_PA
     uncertainty = prior if settings.zero_offset_uncertainty_pa is None else settings.zero_offset_uncertainty_pa
-    return ZeroOffset(0.0, max(uncertainty, 1e-3), ZeroOffsetSource.PRIOR, False)
+    return ZeroOffset(value, max(uncertainty, 1e-3), ZeroOffsetSource.PRIOR, False)
 
 
 def _heading_at_rest(attitude: AttitudeSamples | None, time_s: FloatArray) -> float:

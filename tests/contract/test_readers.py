@@ -155,6 +155,7 @@ def test_trailing_junk(log_format: LogFormat, read: Read, junk: bytes) -> None:
         assert isinstance(outcome, DecodedLog)
         assert outcome.probe is not None
         assert outcome.probe.time_s.size == 120
+        assert outcome.truncated
 
 
 def test_twice_over(log_format: LogFormat, read: Read) -> None:

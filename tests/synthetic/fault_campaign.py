@@ -56,7 +56,10 @@ class Score:
         if not same:
             self.missed[broken.family] += 1
             return
-        off = max(abs(min(f.start_s for f in same) - start_s), abs(max(f.end_s for f in same) - end_s))
+        first_s, last_s = (start_s, end_s) if truth.fault is FaultKind.DEAD else _flown_s(sound)
+        off_start = max(min(f.start_s for f in same), first_s) - start_s
+        off_end = min(max(f.end_s for f in same), last_s) - end_s
+        off = max(abs(off_start), abs(off_end))
         self.found += 1
         self.within_span += off <= SPAN_S
         self.within_window += off <= WINDOW_S
@@ -70,15 +73,22 @@ class Score:
 
 
 def told_span(sound: SimulatedFlight, broken: SimulatedFlight) -> tuple[float, float]:
-    """The true fault's span, cut to what the samples can tell: those that it changed. [s]"""
+    """The true fault's span, cut to what the samples can tell: those that it changed, in flight. [s]"""
     (truth,) = broken.faults
     before, after = sound.log.probe, broken.log.probe
     assert before is not None
     assert after is not None
     if truth.fault in (FaultKind.DROPOUT, FaultKind.FROZEN_STATIC, FaultKind.DEAD):
         return truth.start_s, truth.end_s
+    first_s, last_s = _flown_s(sound)
     changed = before.time_s[before.impact_pressure_pa != after.impact_pressure_pa]
-    return float(changed[0]), float(changed[-1])
+    return max(float(changed[0]), first_s), min(float(changed[-1]), last_s)
+
+
+def _flown_s(flight: SimulatedFlight) -> tuple[float, float]:
+    """Lift-off and touch-down, or the ends of the log. [s]"""
+    flown = flight.truth.time_s[~flight.truth.on_ground]
+    return float(flown[0]), float(flown[-1])
 
 
 def faults_before_fit(flight: SimulatedFlight) -> tuple[Fault, ...]:

@@ -70,8 +70,8 @@ def find_scale_step(
     start_s = loiters[0].start_s if start == 0 else _time_of(opening, time_s, start)
     end_s = loiters[-1].end_s if end == time_s.size else _time_of(closing, time_s, end)
     message = (
-        f"From {start_s:.1f} s to {end_s:.1f} s the probe reads {100 * -np.expm1(2 * step):.0f} % less pressure than in "
-        "the rest of the flight at the same airspeed. A leak, water or dirt in the lines is likely: test them."
+        f"From {start_s:.1f} s to {end_s:.1f} s the probe reads {100 * -np.expm1(2 * step):.0f} % less pressure than "
+        "in the rest of the flight at the same airspeed. A leak, water or dirt in the lines is likely: test them."
     )
     return Fault(FaultKind.LEAK, "probe", start_s, end_s, message)
 

@@ -1,7 +1,7 @@
 """Level of the scale in any span of the fitted points, and its uncertainty in correlated gusts.
 
 Probe airspeed minus wind-corrected ground speed is compared by generalised least squares with the covariance of a gust
-field frozen in the air mass. The length of the field is chosen by restricted likelihood (Patterson and Thompson,
+field carried by the air mass. Length and life of the field are chosen by restricted likelihood (Patterson and Thompson,
 Recovery of inter-block information when block sizes are unequal, Biometrika 58 (1971) 545-554); scale and winds of the
 loiters, drift included, are left free.
 """
@@ -17,8 +17,12 @@ from service.domain.results import FittedPoints
 
 MOST_POINTS = 160
 LENGTHS_M = (60.0, 200.0, 600.0)
+LIVES_S = (np.inf, 60.0, 15.0)
+"""In which a gust at one place in the air mass is another; in still air circles meet the same gusts again and again."""
 NOISE_SHARE = 0.03
 """Of the gust's variance: what GPS and sensor noise leave in a point."""
+LEAST_VARIANCE = 1e-12
+LEAST_STRENGTH = 1e-6
 LEAST_INFORMATION = 1e-6
 """Of the largest: a span that holds next to all points, or none, tells no step."""
 
@@ -40,12 +44,12 @@ class Levels:
         upper = np.triu(np.ones_like(information, dtype=bool), 1)
         upper &= information > LEAST_INFORMATION * information.max()
         safe = np.where(upper, information, 1.0)
-        return np.where(upper, (self.moment[None, :] - self.moment[:, None]) / safe, 0.0), np.where(
-            upper, 1.0 / safe, np.inf
-        )
+        step = np.where(upper, (self.moment[None, :] - self.moment[:, None]) / safe, 0.0)
+        return step, np.where(upper, 1.0 / safe, np.inf)
 
 
 def levels_of_spans(points: FittedPoints) -> Levels:
+    """Levels of all spans of the (k,) points, thinned."""
     points = _thinned(points)
     air, directions = _air_path(points)
     seconds = float(np.median(np.diff(points.time_s)))
@@ -53,31 +57,30 @@ def levels_of_spans(points: FittedPoints) -> Levels:
     geometry = GustGeometry(air, directions, float(np.median(speed)) * seconds)
     residual = points.probe_true_airspeed_mps - speed
     nuisance = _nuisance(points, directions)
-    best = max((_generalised(geometry, length, residual, nuisance) for length in LENGTHS_M), key=lambda g: g[0])
-    _, projector, variance = best
+    apart_s = np.abs(points.time_s[:, None] - points.time_s[None, :])
+    covariances = (geometry.covariance(length) * np.exp(-apart_s / life) for length in LENGTHS_M for life in LIVES_S)
+    _, projector, variance = max((_generalised(c, residual, nuisance) for c in covariances), key=lambda g: g[0])
     before = np.tri(speed.size + 1, speed.size, -1).T * speed[:, None]
     weighted = projector @ before / variance
     return Levels(points, weighted.T @ residual, before.T @ weighted)
 
 
-def _generalised(
-    geometry: GustGeometry, length_m: float, residual: FloatArray, nuisance: FloatArray
-) -> tuple[float, FloatArray, float]:
+def _generalised(gusts: FloatArray, residual: FloatArray, nuisance: FloatArray) -> tuple[float, FloatArray, float]:
     """Restricted log-likelihood, projector that weighs and takes out the nuisance, and the variance of the gust."""
-    covariance = geometry.covariance(length_m) + NOISE_SHARE * np.eye(residual.size)
+    covariance = gusts + NOISE_SHARE * np.eye(residual.size)
     factor = linalg.cho_factor(covariance, lower=True)
     inverse = linalg.cho_solve(factor, np.eye(residual.size))
     weighted = inverse @ nuisance
     gram = nuisance.T @ weighted
     projector = inverse - weighted @ np.linalg.solve(gram, weighted.T)
     freedom = residual.size - nuisance.shape[1]
-    variance = float(residual @ projector @ residual) / freedom
+    variance = max(float(residual @ projector @ residual) / max(freedom, 1), LEAST_VARIANCE)
     log_determinants = 2.0 * float(np.sum(np.log(np.diag(factor[0])))) + float(np.linalg.slogdet(gram)[1])
     return -0.5 * (freedom * np.log(variance) + log_determinants), projector, variance
 
 
 def _nuisance(points: FittedPoints, directions: FloatArray) -> FloatArray:
-    """(k, p) what a wrong scale, and a wrong or drifting wind in each loiter, add to the residuals."""
+    """(k, p) orthonormal: what a wrong scale, and a wrong or drifting wind in each loiter, add to the residuals."""
     columns = [points.wind_corrected_speed_mps]
     for loiter in np.unique(points.loiter):
         inside = points.loiter == loiter
@@ -85,7 +88,9 @@ def _nuisance(points: FittedPoints, directions: FloatArray) -> FloatArray:
         half = max(float(np.ptp(points.time_s[inside])) / 2.0, 1.0)
         for shape in (np.ones_like(time), time / half):
             columns += [inside * shape * directions[:, 0], inside * shape * directions[:, 1]]
-    return np.column_stack(columns)
+    basis, strength, _ = np.linalg.svd(np.column_stack(columns), full_matrices=False)
+    # On a straight leg the wind ahead and the scale are the same thing: one direction of the space is empty.
+    return np.asarray(basis[:, strength > LEAST_STRENGTH * strength[0]])
 
 
 def _air_path(points: FittedPoints) -> tuple[FloatArray, FloatArray]:

@@ -8,22 +8,24 @@ restricted marginal likelihood (Harville 1974) times the prior, so that the doub
 """
 
 from collections.abc import Sequence
-from dataclasses import dataclass
+from dataclasses import dataclass, fields
+from itertools import product
 
 import numpy as np
-from scipy import linalg, optimize, special
 
 from service.airdata.gusts import GustGeometry
-from service.domain.arrays import FloatArray
+from service.domain.arrays import FloatArray, IntArray
 
-LENGTHS_M = np.array([25.0, 50.0, 100.0, 175.0, 300.0, 550.0, 1000.0])
+LENGTHS_M = np.array([40.0, 90.0, 200.0, 400.0, 850.0])
 MEDIAN_LENGTH_M = 200.0
 LENGTH_SPREAD = 0.7
 """Standard deviation of ln(length) about the median: 100 to 400 m holds two thirds (method notes, check values g)."""
-LIFETIMES = (np.inf, 2.0, 0.7)
-"""Life of an eddy in turn-over times length/intensity: frozen for ever, or decaying."""
+LIFETIMES = (np.inf, 1.0)
+"""Life of an eddy in turn-over times length/intensity: frozen for ever, or decaying as real air does; equally likely."""
 INTENSITY_FACTORS = np.geomspace(0.4, 5.0, 12)
 """Gust intensities tried, in units of the residual's root mean square."""
+TYPICAL_INTENSITY_FACTOR = 1.4
+"""A loiter's own fit takes out part of the gust, so that the residual is smaller than the gust."""
 NOISE_SHARES = np.array([0.03, 0.1, 0.2, 0.35, 0.55, 0.8, 1.05])
 """White noise of a block tried, in the same unit."""
 LEAST_WEIGHT = 1e-3
@@ -31,27 +33,43 @@ LEAST_WEIGHT = 1e-3
 
 @dataclass(frozen=True, slots=True)
 class LinearModel:
-    """y (k,) = design (k, p) @ d + eta; `prior_mean`, `prior_precision` (p,), (p, p) of d; `noise` (k,) relative variance."""
+    """Observed (k,) = design (k, p) @ d + eta, prior of d by mean (p,) and precision (p, p); relative noise variance (k,)."""
 
     observed: FloatArray
     design: FloatArray
     prior_mean: FloatArray
     prior_precision: FloatArray
     noise: FloatArray
+    time_s: FloatArray
 
 
 @dataclass(frozen=True, slots=True)
 class Target:
-    """A linear function of d plus the mean gust, along `direction`, over points of the path weighted by `weights` (k,)."""
+    """A linear function of d plus the mean gust along `axis` (0 north, 1 east) over the path, weighted by (k,)."""
 
     coefficients: FloatArray
     weights: FloatArray
-    direction: FloatArray
+    axis: int
+
+
+@dataclass(frozen=True, slots=True)
+class PathGeometry:
+    """The blocks in the air mass, if the air moves as supposed (`log_prior`).
+
+    Rows of `gust`, `to_north` and `to_east` are projected on the air direction; columns likewise, on north, on east.
+    """
+
+    log_prior: float
+    gust: GustGeometry
+    to_north: GustGeometry
+    to_east: GustGeometry
+    north: GustGeometry
+    east: GustGeometry
 
 
 @dataclass(frozen=True, slots=True)
 class GustPosterior:
-    """Mixture over the g grid nodes that matter."""
+    """Mixture of normals over the g grid nodes that matter: of d (p), and of the targets (q)."""
 
     weight: FloatArray
     """(g,)"""
@@ -60,9 +78,9 @@ class GustPosterior:
     length_m: FloatArray
     """(g,)"""
     mean: FloatArray
-    """(g, p) of d"""
+    """(g, p)"""
     covariance: FloatArray
-    """(g, p, p) of d"""
+    """(g, p, p)"""
     target_mean: FloatArray
     """(g, q)"""
     target_variance: FloatArray
@@ -75,140 +93,105 @@ class GustPosterior:
     def spread(self) -> FloatArray:
         """(p, p) covariance of d over the mixture."""
         off = self.mean - self.expected()
-        return np.einsum("g,gpq->pq", self.weight, self.covariance) + np.einsum("g,gp,gq->pq", self.weight, off, off)
-
-
-def mixture_quantile(weight: FloatArray, mean: FloatArray, deviation: FloatArray, probability: float) -> float:
-    """Quantile of a mixture of normals, each argument (g,)."""
-    reach = 12 * float(deviation.max())
-    low, high = float(mean.min()) - reach, float(mean.max()) + reach
-
-    def excess(x: float) -> float:
-        return float(weight @ special.ndtr((x - mean) / deviation)) - probability
-
-    return float(optimize.brentq(excess, low, high, xtol=1e-12))
+        within = np.einsum("g,gpq->pq", self.weight, self.covariance)
+        return np.asarray(within + np.einsum("g,gp,gq->pq", self.weight, off, off))
 
 
 def gust_posterior(
-    model: LinearModel,
-    geometry: GustGeometry,
-    path_geometry: Sequence[GustGeometry],
-    time_s: FloatArray,
-    targets: Sequence[Target],
-    residual_rms: float,
+    model: LinearModel, paths: Sequence[PathGeometry], targets: Sequence[Target], residual_rms_mps: float
 ) -> GustPosterior:
-    """Posterior of `model` and `targets`.
-
-    Parameters
-    ----------
-    geometry : of the blocks' positions and air directions.
-    path_geometry : between blocks (rows, projected on the air direction) and blocks projected on north and on east.
-    residual_rms : scale of the grids. [m/s]
-    """
-    pieces = [
-        _nodes(model, geometry, path_geometry, time_s, targets, residual_rms, length, lifetime)
-        for length in LENGTHS_M.tolist()
-        for lifetime in LIFETIMES
+    """Posterior of `model` and `targets` over gust fields; the grids are scaled by `residual_rms_mps`."""
+    nodes = [
+        _FieldNodes(model, path, residual_rms_mps, length_m, life)
+        for path, length_m, life in product(paths, LENGTHS_M.tolist(), LIFETIMES)
     ]
-    evidence = np.concatenate([piece.evidence for piece in pieces])
+    evidence = np.stack([node.evidence for node in nodes])
     weight = np.exp(evidence - evidence.max())
+    weight[weight < LEAST_WEIGHT] = 0.0
     weight /= weight.sum()
-    kept = weight > LEAST_WEIGHT * weight.max()
-    offset, chosen = 0, []
-    for piece in pieces:
-        part = kept[offset : offset + piece.evidence.size]
-        if part.any():
-            chosen.append((weight[offset : offset + piece.evidence.size][part], piece.solve(np.flatnonzero(part))))
-        offset += piece.evidence.size
-    joined = np.concatenate([w for w, _ in chosen])
-    columns = [np.concatenate([solution[k] for _, solution in chosen]) for k in range(6)]
-    return GustPosterior(joined / joined.sum(), *columns)
+    solved = [
+        node.solve(np.flatnonzero(share), share[share > 0], targets)
+        for node, share in zip(nodes, weight, strict=True)
+        if share.any()
+    ]
+    return GustPosterior(
+        **{
+            field.name: np.concatenate([getattr(part, field.name) for part in solved])
+            for field in fields(GustPosterior)
+        }
+    )
 
 
-Solution = tuple[FloatArray, FloatArray, FloatArray, FloatArray, FloatArray, FloatArray]
-
-
-class _nodes:
-    """All intensities and noises at one length and life of the eddies."""
+class _FieldNodes:
+    """All intensities and noises for one path, length and life of the eddies."""
 
     def __init__(
-        self,
-        model: LinearModel,
-        geometry: GustGeometry,
-        path_geometry: Sequence[GustGeometry],
-        time_s: FloatArray,
-        targets: Sequence[Target],
-        residual_rms: float,
-        length_m: float,
-        lifetime: float,
+        self, model: LinearModel, path: PathGeometry, residual_rms_mps: float, length_m: float, life: float
     ) -> None:
-        self._length_m = length_m
-        fading = _fading(time_s, lifetime * length_m / max(1.5 * residual_rms, 0.02))
-        root_noise = np.sqrt(model.noise)
-        covariance = geometry.covariance(length_m) * fading / np.outer(root_noise, root_noise)
-        eigenvalues, vectors = linalg.eigh(covariance, check_finite=False, driver="evd")
-        self._eigenvalues = np.maximum(eigenvalues, 0.0)
+        self._path, self._length_m, self._prior_mean = path, length_m, model.prior_mean
+        self._fading = _fading(model.time_s, life * length_m / (TYPICAL_INTENSITY_FACTOR * residual_rms_mps))
+        self._root_noise = np.sqrt(model.noise)
+        covariance = path.gust.covariance(length_m) * self._fading / np.outer(self._root_noise, self._root_noise)
+        eigenvalues, self._vectors = np.linalg.eigh(covariance)
         centred = model.observed - model.design @ model.prior_mean
-        self._y = vectors.T @ (centred / root_noise)
-        self._x = vectors.T @ (model.design / root_noise[:, None])
-        self._model = model
-        self._targets = targets
-        self._vectors = vectors
-        self._cross = lambda: self._target_covariances(path_geometry, fading, root_noise)
-        intensity, noise = np.meshgrid(INTENSITY_FACTORS * residual_rms, NOISE_SHARES * residual_rms, indexing="ij")
-        self._intensity, self._noise = intensity.ravel(), noise.ravel()
-        self._weights = 1.0 / (self._intensity[:, None] ** 2 * self._eigenvalues + self._noise[:, None] ** 2)
-        self._solve_all()
-        log_prior = -0.5 * (np.log(length_m / MEDIAN_LENGTH_M) / LENGTH_SPREAD) ** 2
-        log_prior -= np.log(2.0) * (1 if np.isinf(lifetime) else 2)
-        self.evidence = self._log_likelihood + log_prior
+        self._y = self._vectors.T @ (centred / self._root_noise)
+        self._x = self._vectors.T @ (model.design / self._root_noise[:, None])
+        intensity, noise = np.meshgrid(INTENSITY_FACTORS, NOISE_SHARES, indexing="ij")
+        self._intensity = residual_rms_mps * intensity.ravel()
+        noise_variance = (residual_rms_mps * noise.ravel()) ** 2
+        self._precision = 1.0 / (self._intensity[:, None] ** 2 * np.maximum(eigenvalues, 0.0) + noise_variance[:, None])
+        log_prior = path.log_prior - 0.5 * (np.log(length_m / MEDIAN_LENGTH_M) / LENGTH_SPREAD) ** 2
+        self.evidence = log_prior + self._log_likelihood(model.prior_precision)
+        """(nodes,) log of prior times restricted likelihood."""
 
-    def _solve_all(self) -> None:
-        p = self._x.shape[1]
-        products = (self._x[:, :, None] * self._x[:, None, :]).reshape(-1, p * p)
-        self._gram = (self._weights @ products).reshape(-1, p, p)
-        self._information = self._gram + self._model.prior_precision
-        moment = self._weights @ (self._x * self._y[:, None])
+    def _log_likelihood(self, prior_precision: FloatArray) -> FloatArray:
+        size = self._x.shape[1]
+        products = (self._x[:, :, None] * self._x[:, None, :]).reshape(-1, size * size)
+        self._information = (self._precision @ products).reshape(-1, size, size) + prior_precision
+        moment = self._precision @ (self._x * self._y[:, None])
         self._shift = np.linalg.solve(self._information, moment[:, :, None])[:, :, 0]
-        square = self._weights @ self._y**2 - np.einsum("gp,gp->g", moment, self._shift)
+        square = self._precision @ self._y**2 - np.einsum("gp,gp->g", moment, self._shift)
         _, log_determinant = np.linalg.slogdet(self._information)
-        self._log_likelihood = 0.5 * (np.log(self._weights).sum(axis=1) - log_determinant - square)
+        return np.asarray(0.5 * (np.log(self._precision).sum(axis=1) - log_determinant - square))
 
-    def solve(self, nodes: FloatArray) -> Solution:
-        """Intensity, length, mean, covariance of d, target means and variances at the given nodes."""
-        weights, shift = self._weights[nodes], self._shift[nodes]
+    def solve(self, nodes: IntArray, weight: FloatArray, targets: Sequence[Target]) -> GustPosterior:
+        """Posterior at the given nodes, which carry `weight`."""
+        precision, shift = self._precision[nodes], self._shift[nodes]
+        intensity = self._intensity[nodes]
         covariance = np.linalg.inv(self._information[nodes])
-        mean = shift + self._model.prior_mean
-        cross, own = self._cross()
-        intensity_square = self._intensity[nodes] ** 2
-        coefficients = np.array([target.coefficients for target in self._targets])
-        residual = self._y - shift @ self._x.T
-        # kriging: the mean gust over the path given the residuals, and what d's doubt adds
-        gust = intensity_square[:, None] * ((weights * residual) @ cross)
-        leverage = coefficients[None] - intensity_square[:, None, None] * np.einsum(
-            "kq,gk,kp->gqp", cross, weights, self._x, optimize=True
+        cross, own = self._target_covariances(targets)
+        coefficients = np.array([target.coefficients for target in targets])
+        mean = shift + self._prior_mean
+        # kriging: the mean gust over the path given the residuals, and what the doubt about d adds
+        square = intensity[:, None] ** 2
+        gust = square * ((precision * (self._y - shift @ self._x.T)) @ cross)
+        seen = np.einsum("kq,gk,kp->gqp", cross, precision, self._x, optimize=True)
+        leverage = coefficients - square[:, :, None] * seen
+        unexplained = square * own - square**2 * (precision @ cross**2)
+        from_d = np.einsum("gqp,gpr,gqr->gq", leverage, covariance, leverage, optimize=True)
+        return GustPosterior(
+            weight=weight,
+            intensity_mps=intensity,
+            length_m=np.full(nodes.size, self._length_m),
+            mean=mean,
+            covariance=covariance,
+            target_mean=mean @ coefficients.T + gust,
+            target_variance=np.maximum(unexplained, 0.0) + from_d,
         )
-        explained = intensity_square[:, None] ** 2 * (weights @ cross**2)
-        variance = intensity_square[:, None] * own - explained
-        variance = np.maximum(variance, 0.0) + np.einsum("gqp,gpr,gqr->gq", leverage, covariance, leverage)
-        length = np.full(nodes.size, self._length_m)
-        return self._intensity[nodes], length, mean, covariance, mean @ coefficients.T + gust, variance
 
-    def _target_covariances(
-        self, path_geometry: Sequence[GustGeometry], fading: FloatArray, root_noise: FloatArray
-    ) -> tuple[FloatArray, FloatArray]:
+    def _target_covariances(self, targets: Sequence[Target]) -> tuple[FloatArray, FloatArray]:
         """(k, q) covariance of residuals and target gusts in the eigenbasis, and (q,) variance of target gusts."""
-        north, east, north_north, east_east = (g.covariance(self._length_m) * fading for g in path_geometry)
-        cross, own = [], []
-        for target in self._targets:
-            is_north = target.direction[0] > 0.5
-            # the residual holds minus the gust along the air velocity
-            cross.append(-(north if is_north else east) @ target.weights / root_noise)
-            own.append(target.weights @ (north_north if is_north else east_east) @ target.weights)
-        return self._vectors.T @ np.column_stack(cross), np.array(own)
+        length_m, path = self._length_m, self._path
+        across = [geometry.covariance(length_m) * self._fading for geometry in (path.to_north, path.to_east)]
+        within = [geometry.covariance(length_m) * self._fading for geometry in (path.north, path.east)]
+        # the residual holds minus the gust along the air velocity
+        cross = np.column_stack([-across[t.axis] @ t.weights / self._root_noise for t in targets])
+        own = np.array([t.weights @ within[t.axis] @ t.weights for t in targets])
+        return self._vectors.T @ cross, own
 
 
 def _fading(time_s: FloatArray, life_s: float) -> FloatArray:
+    """(k, k) share of the gust that has lived on from one time to another."""
     if not np.isfinite(life_s):
         return np.ones((time_s.size, time_s.size))
-    return np.exp(-np.abs(time_s[:, None] - time_s[None, :]) / life_s)
+    return np.asarray(np.exp(-np.abs(time_s[:, None] - time_s[None, :]) / life_s))

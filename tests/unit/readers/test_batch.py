@@ -85,6 +85,14 @@ def test_samples_without_a_fix_are_nan(tmp_path: Path) -> None:
     np.testing.assert_array_equal(gps.velocity_down_mps, [np.nan, np.nan, 3, 4, 5])
 
 
+def test_a_little_more_than_saturated_is_saturated(tmp_path: Path) -> None:
+    air = {"time_s": [0, 1], "air_temperature_k": [280, 281], "relative_humidity": [0.5, 1.03]}
+    temperature = read(tmp_path, small() | {"temperature": air}).log.temperature
+    assert temperature is not None
+    assert temperature.relative_humidity is not None
+    assert temperature.relative_humidity.tolist() == [0.5, 1.0]
+
+
 def test_settings_pass_through_as_they_are(tmp_path: Path) -> None:
     settings = {"aircraft": {"mass_kg": 6.4, "configurations": [{"name": 'a "b": c'}]}, "unheard_of": [1, None, True]}
     assert read(tmp_path, small() | {"settings": settings}).settings == settings

@@ -12,7 +12,17 @@ from service.readers import ulog_fields as table
 from service.readers.limits import ReadingLimits
 from service.readers.registry import read_log
 from service.readers.ulog_fields import TIME
-from tests.synthetic.ulog_file import Stream, Variant, flight_streams, gps_values, stream, write_container, write_ulog
+from tests.synthetic.ulog_file import (
+    HEADER,
+    Stream,
+    Variant,
+    flight_streams,
+    gps_values,
+    message,
+    stream,
+    write_container,
+    write_ulog,
+)
 from tests.unit.readers.example import START_UTC, circling_log
 
 FLIGHT = circling_log()
@@ -252,6 +262,20 @@ def test_impossible_times_are_left_out_with_a_note(tmp_path: Path) -> None:
     assert "3 samples with impossible times left out" in log.sensors[0].reason
 
 
+def test_impossible_times_among_steps_back(tmp_path: Path) -> None:
+    whole = probe_stream()
+    order = np.arange(600)
+    order[[300, 301]] = order[[301, 300]]
+    messages = whole.messages[order]
+    messages[TIME.name][3] = 2**64 - 1
+    log = from_streams(tmp_path, [replace(whole, messages=messages, arrival_us=np.arange(600))])
+    assert FLIGHT.probe is not None
+    assert log.probe is not None
+    assert log.time_steps_back == 1
+    kept = np.delete(np.arange(600), 3)
+    np.testing.assert_allclose(log.probe.impact_pressure_pa, FLIGHT.probe.impact_pressure_pa[kept], rtol=1e-6)
+
+
 def test_a_sampling_time_of_zero_gives_way_to_the_time_of_writing(tmp_path: Path) -> None:
     whole = flight_streams(FLIGHT, Variant())[0]
     messages = whole.messages.copy()
@@ -267,6 +291,7 @@ def test_a_notion_of_ground_that_never_changes_is_none(tmp_path: Path, state: fl
     assert FLIGHT.ground_contact is not None
     constant = replace(FLIGHT.ground_contact, on_ground=np.full(60, bool(state)))
     assert written(tmp_path, replace(FLIGHT, ground_contact=constant)).ground_contact is None
+    assert written(tmp_path, replace(FLIGHT, ground_contact=constant, gps=None)).ground_contact is None
 
 
 def test_a_notion_of_ground_against_the_gps_is_none(tmp_path: Path) -> None:
@@ -290,6 +315,12 @@ def test_a_loss_of_data_ends_where_data_go_on(tmp_path: Path) -> None:
     first, second = log.gaps
     assert (first.start_s, first.end_s) == (20.0, 22.5)
     assert (second.start_s, second.end_s) == (40.0, 40.05)
+
+
+def test_a_loss_before_the_first_sample_is_none_of_the_logs(tmp_path: Path) -> None:
+    path = tmp_path / "flight.bin"
+    write_container(path, [probe_stream()], start_us=1_000_000, dropouts=[(2_000_000, 500)])
+    assert read(path).gaps == ()
 
 
 @pytest.mark.parametrize("bytes_left_out", [1, 2, 7, 20])
@@ -323,8 +354,25 @@ def test_appended_data_do_no_harm_and_their_loss_is_said(tmp_path: Path) -> None
     assert log.probe is not None
     assert log.probe.time_s.size == 600
     assert not log.truncated
-    path.write_bytes(path.read_bytes()[: -len(appended) - 100])
-    assert read(path).truncated
+    content = path.read_bytes()
+    for lost in (len(appended), len(appended) + 100):
+        path.write_bytes(content[:-lost])
+        assert read(path).truncated
+
+
+def test_data_may_be_appended_in_the_middle_of_a_message(tmp_path: Path) -> None:
+    """As after a crash: the last message before it is lost, and nothing of what follows is taken for its rest."""
+    path = tmp_path / "flight.bin"
+    write_container(path, [probe_stream()], appended=b"")
+    content = bytearray(path.read_bytes()[:-4])
+    flags = len(HEADER) + 8 + 3
+    content[flags + 8] = 1
+    content[flags + 16 : flags + 24] = len(content).to_bytes(8, "little")
+    path.write_bytes(content + message(b"M", b"\x00\x03abc") * 30)
+    log = read(path)
+    assert FLIGHT.probe is not None
+    assert log.probe is not None
+    np.testing.assert_allclose(log.probe.impact_pressure_pa, FLIGHT.probe.impact_pressure_pa[:-1], rtol=1e-6)
 
 
 def test_impossible_values_are_gaps(tmp_path: Path) -> None:

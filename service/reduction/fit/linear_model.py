@@ -1,0 +1,200 @@
+"""The fit, linear about a state: residuals of the blocks, their smoothed slopes, priors, and the path in the air mass."""
+
+from collections.abc import Iterator, Sequence
+from dataclasses import dataclass
+
+import numpy as np
+
+from service.airdata.gusts import GustGeometry
+from service.domain.arrays import FloatArray
+from service.domain.results import AirDataSeries, Loiter
+from service.reduction.fit.blocks import Blocks
+from service.reduction.fit.gust_posterior import LinearModel, PathGeometry, Target
+from service.reduction.fit.start import DelayPrior, OffsetPrior, Residuals, State
+
+WIND_CHANGE_MPS = 1.5
+WIND_CHANGE_TIME_S = 1800.0
+WIND_CHANGE_HEIGHT_M = 400.0
+"""Winds of two loiters differ by about 0.75 m/s after four minutes and 1.2 m/s over 150 m of height (one sigma)."""
+WIND_DRIFT_MPS_PER_MIN = 0.25
+UNKNOWN_WIND_MPS = 50.0
+LIGHT_WIND_MPS = 2.5
+"""Below it the air flown through depends on the air mass's own motion, which the local mean wind tells only roughly."""
+ADVECTION_DOUBT = 1.1
+"""Standard deviation of that motion about the local mean wind, in units of the residual's root mean square."""
+
+
+@dataclass(frozen=True, slots=True)
+class Columns:
+    """Where each parameter stands in d: ln K, zero offset, delay, winds by loiter, drifts by loiter [m/s per min]."""
+
+    loiters: int
+
+    @property
+    def count(self) -> int:
+        return 3 + 4 * self.loiters
+
+    def wind(self, axis: int) -> slice:
+        """Wind of every loiter along one axis (0 north, 1 east)."""
+        return slice(3 + axis, 3 + 2 * self.loiters, 2)
+
+    @property
+    def winds(self) -> slice:
+        return slice(3, 3 + 2 * self.loiters)
+
+    @property
+    def drifts(self) -> slice:
+        return slice(3 + 2 * self.loiters, self.count)
+
+
+def linear_model(
+    series: AirDataSeries, blocks: Blocks, state: State, now: Residuals, offset: OffsetPrior, delay: DelayPrior
+) -> LinearModel:
+    """Linear model of the block residuals about `state`."""
+    columns = Columns(state.wind_mps.shape[0])
+    observed = blocks.mean(now.residual_mps)
+    slopes = np.zeros((observed.size, columns.count))
+    slopes[:, 0] = _over_one_turn(blocks, blocks.mean(now.probe.per_log_scale))
+    slopes[:, 1] = _over_one_turn(blocks, blocks.mean(now.probe.per_zero_offset))
+    slopes[:, 2] = _over_one_turn(blocks, blocks.mean(-now.probe.per_second))
+    direction, minutes = directions(now.air_velocity_mps), _minutes_in_loiter(blocks)
+    rows = np.arange(observed.size)
+    for axis in (0, 1):
+        along = blocks.mean(direction[:, axis])
+        slopes[rows, columns.winds.start + 2 * blocks.loiter + axis] = along
+        slopes[rows, columns.drifts.start + 2 * blocks.loiter + axis] = along * minutes
+    mean = np.zeros(columns.count)
+    mean[1] = offset.value_pa - state.zero_offset_pa
+    mean[2] = delay.value_s - state.delay_s
+    mean[columns.winds] = (state.wind_mps.mean(axis=0) - state.wind_mps).ravel()
+    precision = np.zeros((columns.count, columns.count))
+    precision[1, 1] = offset.standard_uncertainty_pa**-2
+    precision[2, 2] = delay.standard_uncertainty_s**-2
+    precision[columns.winds, columns.winds] = _wind_precision(blocks, columns.loiters)
+    precision[columns.drifts, columns.drifts] = np.eye(2 * columns.loiters) / WIND_DRIFT_MPS_PER_MIN**2
+    # the residual at the true parameters is the gust: observed = -slopes d + eta
+    noise = float(np.median(blocks.counts)) / blocks.counts
+    return LinearModel(observed, -slopes, mean, precision, noise, blocks.mean(blocks.time_s))
+
+
+def directions(velocity_mps: FloatArray) -> FloatArray:
+    """(n, 3) unit vectors of velocities (n, 3)."""
+    return np.asarray(velocity_mps / np.maximum(np.linalg.norm(velocity_mps, axis=1), 1e-6)[:, None])
+
+
+def loiter_means(blocks: Blocks, values: FloatArray, loiters: int) -> FloatArray:
+    """Mean of block values (k,) by loiter; of all where a loiter has no block, or where its values are unknown."""
+    known = np.isfinite(values)
+    count = np.bincount(blocks.loiter[known], minlength=loiters)
+    total = np.bincount(blocks.loiter[known], weights=values[known], minlength=loiters)
+    overall = float(values[known].mean()) if known.any() else float("nan")
+    return np.where(count > 0, total / np.maximum(count, 1), overall)
+
+
+def time_shares(blocks: Blocks, loiters: Sequence[Loiter]) -> FloatArray:
+    """(number of loiters,) share of each in the time flown in all that were used; sums to 1."""
+    lasting = [
+        loiter.end_s - loiter.start_s if loiter.used and (blocks.loiter == index).any() else 0.0
+        for index, loiter in enumerate(loiters)
+    ]
+    return np.array(lasting) / sum(lasting)
+
+
+def wind_targets(blocks: Blocks, loiters: Sequence[Loiter]) -> list[Target]:
+    """Wind over path and time, north and east: of all used loiters by their time, then of each loiter."""
+    columns = Columns(len(loiters))
+    targets = []
+    for shares in (time_shares(blocks, loiters), *np.eye(len(loiters))):
+        weights = np.zeros(blocks.loiter.size)
+        for index in np.flatnonzero(shares).tolist():
+            inside = blocks.loiter == index
+            weights[inside] = shares[index] * blocks.counts[inside] / max(blocks.counts[inside].sum(), 1.0)
+        for axis in (0, 1):
+            coefficients = np.zeros(columns.count)
+            coefficients[columns.wind(axis)] = shares
+            targets.append(Target(coefficients, weights, axis))
+    return targets
+
+
+def air_path(series: AirDataSeries, blocks: Blocks, wind_mps: FloatArray) -> FloatArray:
+    """(k, 3) positions in the air mass at the blocks' mean times, for winds (number of loiters, 2). [m]"""
+    time_s = series.gps_time_s
+    middle = loiter_means(blocks, blocks.mean(blocks.time_s), wind_mps.shape[0])
+    order = np.argsort(middle)
+    path = np.zeros((time_s.size, 3))
+    for axis, velocity in enumerate((series.velocity_north_mps, series.velocity_east_mps, series.velocity_down_mps)):
+        wind = np.interp(time_s, middle[order], wind_mps[order, axis]) if axis < 2 else 0.0
+        air = velocity - wind
+        path[1:, axis] = np.cumsum(0.5 * (air[1:] + air[:-1]) * np.diff(time_s))
+    if np.isfinite(series.gps_altitude_m).all():
+        path[:, 2] = -series.gps_altitude_m
+    at = blocks.mean(blocks.time_s)
+    return np.column_stack([np.interp(at, time_s, path[:, axis]) for axis in range(3)])
+
+
+def possible_paths(
+    series: AirDataSeries, blocks: Blocks, state: State, now: Residuals, residual_rms_mps: float
+) -> list[PathGeometry]:
+    """Paths in the air mass: one, or five about it where the wind is so light that its own doubt matters.
+
+    The field drifts with the wind of a wide neighbourhood; over one spot only that wind plus the mean gust is seen. Five
+    points stand for the normal distribution of the difference (cubature of degree three with a centre).
+    """
+    direction = directions(blocks.mean(directions(now.air_velocity_mps)))
+    averaging_m = blocks.seconds * float(np.median(now.probe.speed_mps))
+    doubt = ADVECTION_DOUBT * residual_rms_mps * np.sqrt(3.0)
+    shifts = [(0.0, 0.0, 1 / 3)]
+    if float(np.hypot(*state.wind_mps.mean(axis=0))) < LIGHT_WIND_MPS:
+        shifts += [(doubt, 0.0, 1 / 6), (-doubt, 0.0, 1 / 6), (0.0, doubt, 1 / 6), (0.0, -doubt, 1 / 6)]
+    return list(_geometries(series, blocks, state, direction, averaging_m, shifts))
+
+
+def _geometries(
+    series: AirDataSeries,
+    blocks: Blocks,
+    state: State,
+    direction: FloatArray,
+    averaging_m: float,
+    shifts: Sequence[tuple[float, float, float]],
+) -> Iterator[PathGeometry]:
+    north, east = (np.tile(axis, (direction.shape[0], 1)) for axis in np.eye(3)[:2])
+    for shift_north, shift_east, weight in shifts:
+        path = air_path(series, blocks, state.wind_mps + np.array([shift_north, shift_east]))
+        yield PathGeometry(
+            float(np.log(weight)),
+            gust=GustGeometry(path, direction, averaging_m),
+            to_north=GustGeometry(path, direction, averaging_m, path, north),
+            to_east=GustGeometry(path, direction, averaging_m, path, east),
+            north=GustGeometry(path, north, averaging_m),
+            east=GustGeometry(path, east, averaging_m),
+        )
+
+
+def _over_one_turn(blocks: Blocks, values: FloatArray) -> FloatArray:
+    """Running mean of block values over one turn, within each loiter: quick changes are pushed by the gusts (trap 2)."""
+    smooth = values.copy()
+    for index in np.unique(blocks.loiter).tolist():
+        inside = np.flatnonzero(blocks.loiter == index)
+        half = int(blocks.memory[index]) // 2
+        total = np.concatenate([[0.0], np.cumsum(values[inside])])
+        low = np.maximum(np.arange(inside.size) - half, 0)
+        high = np.minimum(np.arange(inside.size) + half + 1, inside.size)
+        smooth[inside] = (total[high] - total[low]) / (high - low)
+    return smooth
+
+
+def _minutes_in_loiter(blocks: Blocks) -> FloatArray:
+    """(k,) time from the middle of each block's loiter. [min]"""
+    time_s = blocks.mean(blocks.time_s)
+    middle = loiter_means(blocks, time_s, blocks.memory.size)
+    return np.asarray((time_s - middle[blocks.loiter]) / 60.0)
+
+
+def _wind_precision(blocks: Blocks, loiters: int) -> FloatArray:
+    """Winds of loiters near in time and height are alike; their common level is free."""
+    time_s = loiter_means(blocks, blocks.mean(blocks.time_s), loiters)
+    height = np.nan_to_num(loiter_means(blocks, blocks.mean(blocks.altitude_m), loiters))
+    later, higher = (np.abs(values[:, None] - values) for values in (time_s, height))
+    alike = np.exp(-later / WIND_CHANGE_TIME_S - higher / WIND_CHANGE_HEIGHT_M)
+    covariance = WIND_CHANGE_MPS**2 * alike + 1e-6 * np.eye(loiters) + UNKNOWN_WIND_MPS**2
+    return np.kron(np.linalg.inv(covariance), np.eye(2))

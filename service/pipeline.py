@@ -114,7 +114,7 @@ def _calibrate(log: DecodedLog, series: AirDataSeries, settings: Settings, fault
     reason = _holds_nothing(log, series, usable, faults, loiters)
     if reason is not None:
         return _Outcome(refused([reason], zero.source), loiters, None, faults, zero)
-    first = _first_fit(log, series, usable, loiters, zero)
+    first = _first_fit(series, usable, loiters, zero)
     if isinstance(first, ReasonGiven):
         return _Outcome(refused([first], zero.source), loiters, None, faults, zero)
     wind = _wind_aloft(series, first)
@@ -176,7 +176,7 @@ def _fault_reason(faults: FaultReport) -> ReasonGiven:
 
 
 def _first_fit(
-    log: DecodedLog, series: AirDataSeries, usable: BoolArray, loiters: tuple[Loiter, ...], zero: ZeroOffset
+    series: AirDataSeries, usable: BoolArray, loiters: tuple[Loiter, ...], zero: ZeroOffset
 ) -> PreliminaryFit | ReasonGiven:
     delay = prior_delay()
     return preliminary_fit(
@@ -191,7 +191,7 @@ def _first_fit(
 def _full_fit(
     log: DecodedLog, series: AirDataSeries, usable: BoolArray, loiters: tuple[Loiter, ...], zero: ZeroOffset
 ) -> FitResult | ReasonGiven:
-    first = _first_fit(log, series, usable, loiters, zero)
+    first = _first_fit(series, usable, loiters, zero)
     if isinstance(first, ReasonGiven):
         return first
     delay = delay_from_heading(first.blocks.time_s, first.air_heading_rad(), first.turn_numbers(), log.attitude)

@@ -57,7 +57,9 @@ def judge(flight: SimulatedFlight, reduction: Reduction) -> Outcome:
     reasons = tuple(str(reason.code) for reason in calibration.reasons)
     if calibration.speed_scale is None or reduction.wind is None or reduction.airspeed is None:
         nothing = (float("nan"), float("nan"))
-        return Outcome("refused", *nothing, False, False, nothing, nothing, (False, False), *nothing, alarms, reasons, 0.0)
+        return Outcome(
+            "refused", *nothing, False, False, nothing, nothing, (False, False), *nothing, alarms, reasons, 0.0
+        )
     scale = calibration.speed_scale
     spans = [(loiter.start_s, loiter.end_s) for loiter in reduction.loiters if loiter.used]
     wind = truth.mean_air_velocity(spans)

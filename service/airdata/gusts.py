@@ -70,11 +70,20 @@ class GustGeometry:
         self._longitudinal = along_first * along_second * inverse_square
         self._cosine = directions @ facing.T
         self._share = square / self._distance**2
+        self._known: dict[float, FloatArray] = {}
 
     def covariance(self, length_m: float) -> FloatArray:
-        """(n, n) covariance of the projected gusts for unit intensity and integral length `length_m`."""
+        """(n, n) covariance of the projected gusts for unit intensity and integral length `length_m`.
+
+        Kept for the next call with the same length: treat it as read-only.
+        """
+        if length_m not in self._known:
+            self._known[length_m] = self._covariance(length_m)
+        return self._known[length_m]
+
+    def _covariance(self, length_m: float) -> FloatArray:
         z = self._distance / (VON_KARMAN_LENGTH * length_m)
         f = np.interp(z, _TABLE_X, _TABLE_F, right=0.0)
         half_zf = 0.5 * self._share * np.interp(z, _TABLE_X, _TABLE_ZF, right=0.0)
         # f - g = -(r/2) f'
-        return (f + half_zf) * self._cosine - half_zf * self._longitudinal
+        return np.asarray((f + half_zf) * self._cosine - half_zf * self._longitudinal)

@@ -270,8 +270,8 @@ class FitResult:
     zero_offset_pa: float
     covariance: FloatArray
     log_density_uncertainty: float
-    """Share of the density in the uncertainty of ln K. It stays out of the true airspeed, whose scale was found with the
-    same density against the GPS: there the two errors cancel."""
+    """Share of the density in the uncertainty of ln K. It stays out of the true airspeed, whose scale was found with
+    the same density against the GPS: there the two errors cancel."""
     coverage_factor_95: float
     zero_offset_source: ZeroOffsetSource
     gps_delay_s: Estimate | None

@@ -37,7 +37,7 @@ def prior_delay() -> GpsDelay:
 def delay_from_heading(
     gps_time_s: FloatArray, air_heading_rad: FloatArray, piece: IntArray, attitude: AttitudeSamples | None
 ) -> GpsDelay:
-    """Delay from yaw against the direction of the air velocity, joined with the prior; the prior where it can't be told.
+    """Delay from yaw against the direction of the air velocity, joined with the prior; the prior where none tells.
 
     Parameters
     ----------

@@ -1,13 +1,14 @@
 """Loiters: spans whose air headings go round, found in the plane of the ground velocity (v_north, v_east).
 
-There the velocity vector runs round a circle whose centre is the wind and whose radius is the airspeed, so a wind stronger
-than the airspeed hides nothing. The winding is counted about an estimate of the centre (algebraic circle fit, Kasa 1976);
-any centre inside the circle counts the same turns. Where no circles are flown, the whole time in the air serves as a
-pattern of legs: whether its headings suffice is for the verdict, not for the shape.
+There the velocity vector runs round a circle whose centre is the wind and whose radius is the airspeed, so a wind
+stronger than the airspeed hides nothing. The winding is counted about an estimate of the centre (algebraic circle fit,
+Kasa 1976); any centre inside the circle counts the same turns. Where no circles are flown, all the time in the air
+serves as a pattern of legs: whether its headings suffice is for the verdict, not for the shape.
 """
 
 from collections.abc import Sequence
 from dataclasses import replace
+from itertools import pairwise
 
 import numpy as np
 
@@ -73,7 +74,7 @@ def joint_coverage(series: AirDataSeries, loiters: Sequence[Loiter]) -> float:
 
 
 def _headings(series: AirDataSeries) -> tuple[FloatArray, FloatArray, FloatArray]:
-    """Times in the air, unwrapped headings of the air velocity [deg] and airspeeds [m/s] in the plane of the velocity."""
+    """Times in the air, and there unwrapped headings of the air velocity [deg] and airspeeds [m/s]."""
     airborne = ~series.gps_on_ground
     time_s = series.gps_time_s[airborne]
     north = _smoothed(time_s, series.velocity_north_mps[airborne])
@@ -92,12 +93,12 @@ def _coverage_within(time_s: FloatArray, heading: FloatArray, loiters: Sequence[
 
 def _smoothed(time_s: FloatArray, values: FloatArray) -> FloatArray:
     """Running mean over SMOOTHING_S (in samples of the median interval)."""
-    width = int(round(SMOOTHING_S / max(float(np.median(np.diff(time_s))), 1e-3))) | 1
+    width = round(SMOOTHING_S / max(float(np.median(np.diff(time_s))), 1e-3)) | 1
     if width < 3 or values.size < width:
         return values
     padded = np.pad(values, width // 2, mode="edge")
     total = np.concatenate([[0.0], np.cumsum(padded)])
-    return (total[width:] - total[:-width]) / width
+    return np.asarray((total[width:] - total[:-width]) / width)
 
 
 def _circle_centre(north: FloatArray, east: FloatArray) -> tuple[float, float]:
@@ -152,7 +153,7 @@ def _windings(heading: FloatArray) -> list[tuple[int, int]]:
             pivots.append(extreme)
             sign, extreme = -sign, index
     pivots.append(heading.size - 1)
-    return list(zip(pivots[:-1], pivots[1:], strict=True))
+    return list(pairwise(pivots))
 
 
 def _circles(time_s: FloatArray, heading: FloatArray) -> list[tuple[float, float]]:
@@ -193,9 +194,9 @@ def _parts(start_s: float, end_s: float, longest_s: float) -> list[tuple[float, 
 def _patterns(time_s: FloatArray) -> list[tuple[float, float]]:
     """All time in the air, cut at gaps and into parts of LONGEST_PATTERN_S."""
     joined = np.concatenate([[False], np.diff(time_s) <= LARGEST_GAP_S])
-    breaks = [0, *np.flatnonzero(~joined[1:]).__add__(1).tolist(), time_s.size]
+    breaks = [0, *(1 + np.flatnonzero(~joined[1:])).tolist(), time_s.size]
     spans = []
-    for first, last in zip(breaks[:-1], breaks[1:], strict=True):
+    for first, last in pairwise(breaks):
         if last - first >= 8:
             spans.extend(_parts(time_s[first], time_s[last - 1], LONGEST_PATTERN_S))
     return spans

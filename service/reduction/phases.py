@@ -1,4 +1,4 @@
-"""When the aircraft stood on the ground: needed for the zero offset, for silence of warnings, and to keep it out of fits.
+"""When the aircraft stood on the ground: for the zero offset, for the silence of warnings, and to keep it out of fits.
 
 Rest is judged by GPS speed at the start or the end of the log, or by the recorder's own ground contact; rolling lasts
 from rest until the aircraft has climbed off its resting height. An aircraft that hangs in a strong headwind has no

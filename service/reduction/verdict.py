@@ -139,7 +139,7 @@ def _doubts(
             ReasonGiven(
                 Reason.INTERVAL_WIDE,
                 f"The 95 % interval of the speed scale is ±{half_width:.3f}, wider than ±{ACCEPTED_HALF_WIDTH}: "
-                f"{_remedy(fit, zero)}.",
+                f"{_remedy(fit)}.",
             )
         )
     turns = sum(loiter.turns for loiter in loiters if loiter.used and loiter.direction is not Direction.STRAIGHT)
@@ -159,7 +159,8 @@ def _doubts(
         doubts.append(
             ReasonGiven(
                 Reason.STANDARD_TEMPERATURE,
-                f"No air temperature was given: the standard atmosphere's is used, ±{series.temperature_uncertainty_k:.0f} K.",
+                "No air temperature was given: the standard atmosphere's is used, "
+                f"±{series.temperature_uncertainty_k:.0f} K.",
             )
         )
     if series.standard_static:
@@ -172,7 +173,7 @@ def _doubts(
     return doubts
 
 
-def _remedy(fit: FitResult, zero: ZeroOffset) -> str:
+def _remedy(fit: FitResult) -> str:
     """What would narrow the interval most."""
     scale = float(np.sqrt(fit.covariance[0, 0]))
     pressure = float(np.median(fit.points.probe_true_airspeed_mps)) ** 2 * 0.6 / fit.pressure_scale

@@ -108,7 +108,7 @@ def _heading_at_rest(attitude: AttitudeSamples | None, time_s: FloatArray) -> fl
 
 
 def _from_rest(rests: Sequence[RestReading], wind: WindAloft | None) -> tuple[float, float]:
-    """Zero and its standard uncertainty from the rests, each freed of the wind foretold, the best ones weighing most."""
+    """Zero and its standard uncertainty from the rests, each freed of the wind foretold."""
     values, variances = [], []
     for rest in rests:
         bias, doubt = _wind_bias(rest, wind)

@@ -1,8 +1,8 @@
 """GPS samples of the loiters, gathered into blocks along the path that the fit works on.
 
-Residuals and their derivatives are averaged over a block, never the velocity vectors (an averaged vector is shorter: the
-design notes' third trap). A block spans a small part of a turn; a long flight is thinned to whole turns spread evenly
-over it, since neighbouring turns tell little more than one of them.
+Residuals and their derivatives are averaged over a block, never the velocity vectors (an averaged vector is shorter:
+the method notes' third trap). A block spans a small part of a turn; a long flight is thinned to whole turns spread
+evenly over it, since neighbouring turns tell little more than one of them.
 """
 
 from collections.abc import Sequence
@@ -80,7 +80,7 @@ def gather_blocks(series: AirDataSeries, loiters: Sequence[Loiter]) -> Blocks | 
         inside = np.flatnonzero(
             (series.gps_time_s >= loiter.start_s) & (series.gps_time_s <= loiter.end_s) & ~series.gps_on_ground
         )
-        memory[index] = max(int(round(_memory_seconds(loiter) / seconds)), 1)
+        memory[index] = max(round(_memory_seconds(loiter) / seconds), 1)
         number = ((series.gps_time_s[inside] - loiter.start_s) / seconds).astype(np.int64)
         indices.append(inside)
         keys.append(np.column_stack([np.full(inside.size, index), number]))
@@ -131,4 +131,5 @@ def _thinned(key: FloatArray | IntArray, memory: IntArray) -> BoolArray:
         return np.ones(key.shape[0], dtype=bool)
     turn = key[:, 1] // memory[key[:, 0]]
     # a low-discrepancy pick keeps turns spread over every loiter and always the first of each
-    return np.asarray(np.floor((turn + 1) * keep_share) > np.floor(turn * keep_share)) | (turn == 0)
+    picked = np.floor((turn + 1) * keep_share) > np.floor(turn * keep_share)
+    return np.asarray(picked | (turn == 0))

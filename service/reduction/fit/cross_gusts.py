@@ -1,9 +1,9 @@
 """Second-order effect of gusts across the path on the mean residual (method notes, trap 4).
 
 A gust across the path lengthens the air velocity if the aircraft does not follow it, and the wind-corrected ground
-velocity if it does: with the share c of it followed, probe minus ground side is ``s^2 (1 - 2c) / 2V`` on average, c being
-the correlation E[g v] / s^2 of the gust with the motion v that it causes. c is read off the motion itself: the sideways
-wander about a smooth circle, and the vertical velocity, against the gust that the fit found.
+velocity if it does: with the share c of it followed, probe minus ground side is ``s^2 (1 - 2c) / 2V`` on average, c
+being the correlation E[g v] / s^2 of the gust with the motion v that it causes. c is read off the motion itself: the
+sideways wander about a smooth circle, and the vertical velocity, against the gust that the fit found.
 """
 
 from dataclasses import dataclass
@@ -57,7 +57,7 @@ def cross_gusts(
 
 
 def _share(ratio: float) -> float:
-    return float(np.clip(ratio, 0.0, 1.0)) ** SHARE_EXPONENT
+    return float(np.clip(ratio, 0.0, 1.0) ** SHARE_EXPONENT)
 
 
 def _sideways_wander(

@@ -12,6 +12,7 @@ from dataclasses import dataclass, fields
 from itertools import product
 
 import numpy as np
+from scipy import linalg
 
 from service.airdata.gusts import GustGeometry
 from service.domain.arrays import FloatArray, IntArray
@@ -21,7 +22,7 @@ MEDIAN_LENGTH_M = 200.0
 LENGTH_SPREAD = 0.7
 """Standard deviation of ln(length) about the median: 100 to 400 m holds two thirds (method notes, check values g)."""
 LIFETIMES = (np.inf, 1.0)
-"""Life of an eddy in turn-over times length/intensity: frozen for ever, or decaying as real air does; equally likely."""
+"""Life of an eddy in turn-over times length/intensity: frozen for ever, or decaying; equally likely."""
 INTENSITY_FACTORS = np.geomspace(0.4, 5.0, 12)
 """Gust intensities tried, in units of the residual's root mean square."""
 TYPICAL_INTENSITY_FACTOR = 1.4
@@ -33,7 +34,7 @@ LEAST_WEIGHT = 1e-3
 
 @dataclass(frozen=True, slots=True)
 class LinearModel:
-    """Observed (k,) = design (k, p) @ d + eta, prior of d by mean (p,) and precision (p, p); relative noise variance (k,)."""
+    """Observed (k,) = design (k, p) @ d + eta; prior of d: mean (p,), precision (p, p); relative noise (k,)."""
 
     observed: FloatArray
     design: FloatArray
@@ -54,12 +55,11 @@ class Target:
 
 @dataclass(frozen=True, slots=True)
 class PathGeometry:
-    """The blocks in the air mass, if the air moves as supposed (`log_prior`).
+    """The blocks in the air mass.
 
     Rows of `gust`, `to_north` and `to_east` are projected on the air direction; columns likewise, on north, on east.
     """
 
-    log_prior: float
     gust: GustGeometry
     to_north: GustGeometry
     to_east: GustGeometry
@@ -97,20 +97,43 @@ class GustPosterior:
         return np.asarray(within + np.einsum("g,gp,gq->pq", self.weight, off, off))
 
 
+def likeliest_field(
+    model: LinearModel, gust: GustGeometry, residual_rms_mps: float, length_m: float = MEDIAN_LENGTH_M
+) -> tuple[float, float]:
+    """Intensity and noise [m/s] of the likeliest node for a frozen field of one length."""
+    nodes = _FieldNodes(model, gust, residual_rms_mps, length_m, np.inf)
+    best = int(np.argmax(nodes.evidence))
+    return float(nodes.intensity_mps[best]), float(nodes.noise_mps[best])
+
+
+def field_evidence(
+    model: LinearModel, gust: GustGeometry, intensity_mps: float, noise_mps: float, length_m: float = MEDIAN_LENGTH_M
+) -> float:
+    """Log restricted likelihood of `model` in one frozen field, less a constant."""
+    covariance = intensity_mps**2 * gust.covariance(length_m) + noise_mps**2 * np.diag(model.noise)
+    factor = linalg.cholesky(covariance, lower=True, check_finite=False, overwrite_a=True)
+    centred = model.observed - model.design @ model.prior_mean
+    white = linalg.solve_triangular(factor, np.column_stack([model.design, centred]), lower=True, check_finite=False)
+    x, y = white[:, :-1], white[:, -1]
+    information, moment = x.T @ x + model.prior_precision, x.T @ y
+    square = y @ y - moment @ np.linalg.solve(information, moment)
+    return float(-np.log(np.diag(factor)).sum() - 0.5 * (np.linalg.slogdet(information)[1] + square))
+
+
 def gust_posterior(
-    model: LinearModel, paths: Sequence[PathGeometry], targets: Sequence[Target], residual_rms_mps: float
+    model: LinearModel, path: PathGeometry, targets: Sequence[Target], residual_rms_mps: float
 ) -> GustPosterior:
     """Posterior of `model` and `targets` over gust fields; the grids are scaled by `residual_rms_mps`."""
     nodes = [
-        _FieldNodes(model, path, residual_rms_mps, length_m, life)
-        for path, length_m, life in product(paths, LENGTHS_M.tolist(), LIFETIMES)
+        _FieldNodes(model, path.gust, residual_rms_mps, length_m, life)
+        for length_m, life in product(LENGTHS_M.tolist(), LIFETIMES)
     ]
     evidence = np.stack([node.evidence for node in nodes])
     weight = np.exp(evidence - evidence.max())
     weight[weight < LEAST_WEIGHT] = 0.0
     weight /= weight.sum()
     solved = [
-        node.solve(np.flatnonzero(share), share[share > 0], targets)
+        node.solve(np.flatnonzero(share), share[share > 0], path, targets)
         for node, share in zip(nodes, weight, strict=True)
         if share.any()
     ]
@@ -126,21 +149,21 @@ class _FieldNodes:
     """All intensities and noises for one path, length and life of the eddies."""
 
     def __init__(
-        self, model: LinearModel, path: PathGeometry, residual_rms_mps: float, length_m: float, life: float
+        self, model: LinearModel, gust: GustGeometry, residual_rms_mps: float, length_m: float, life: float
     ) -> None:
-        self._path, self._length_m, self._prior_mean = path, length_m, model.prior_mean
+        self._length_m, self._prior_mean = length_m, model.prior_mean
         self._fading = _fading(model.time_s, life * length_m / (TYPICAL_INTENSITY_FACTOR * residual_rms_mps))
         self._root_noise = np.sqrt(model.noise)
-        covariance = path.gust.covariance(length_m) * self._fading / np.outer(self._root_noise, self._root_noise)
+        covariance = gust.covariance(length_m) * self._fading / np.outer(self._root_noise, self._root_noise)
         eigenvalues, self._vectors = np.linalg.eigh(covariance)
         centred = model.observed - model.design @ model.prior_mean
         self._y = self._vectors.T @ (centred / self._root_noise)
         self._x = self._vectors.T @ (model.design / self._root_noise[:, None])
         intensity, noise = np.meshgrid(INTENSITY_FACTORS, NOISE_SHARES, indexing="ij")
-        self._intensity = residual_rms_mps * intensity.ravel()
-        noise_variance = (residual_rms_mps * noise.ravel()) ** 2
-        self._precision = 1.0 / (self._intensity[:, None] ** 2 * np.maximum(eigenvalues, 0.0) + noise_variance[:, None])
-        log_prior = path.log_prior - 0.5 * (np.log(length_m / MEDIAN_LENGTH_M) / LENGTH_SPREAD) ** 2
+        self.intensity_mps, self.noise_mps = residual_rms_mps * intensity.ravel(), residual_rms_mps * noise.ravel()
+        gust_variance = self.intensity_mps[:, None] ** 2 * np.maximum(eigenvalues, 0.0)
+        self._precision = 1.0 / (gust_variance + self.noise_mps[:, None] ** 2)
+        log_prior = -0.5 * (np.log(length_m / MEDIAN_LENGTH_M) / LENGTH_SPREAD) ** 2
         self.evidence = log_prior + self._log_likelihood(model.prior_precision)
         """(nodes,) log of prior times restricted likelihood."""
 
@@ -154,12 +177,14 @@ class _FieldNodes:
         _, log_determinant = np.linalg.slogdet(self._information)
         return np.asarray(0.5 * (np.log(self._precision).sum(axis=1) - log_determinant - square))
 
-    def solve(self, nodes: IntArray, weight: FloatArray, targets: Sequence[Target]) -> GustPosterior:
+    def solve(
+        self, nodes: IntArray, weight: FloatArray, path: PathGeometry, targets: Sequence[Target]
+    ) -> GustPosterior:
         """Posterior at the given nodes, which carry `weight`."""
         precision, shift = self._precision[nodes], self._shift[nodes]
-        intensity = self._intensity[nodes]
+        intensity = self.intensity_mps[nodes]
         covariance = np.linalg.inv(self._information[nodes])
-        cross, own = self._target_covariances(targets)
+        cross, own = self._target_covariances(path, targets)
         coefficients = np.array([target.coefficients for target in targets])
         mean = shift + self._prior_mean
         # kriging: the mean gust over the path given the residuals, and what the doubt about d adds
@@ -179,9 +204,9 @@ class _FieldNodes:
             target_variance=np.maximum(unexplained, 0.0) + from_d,
         )
 
-    def _target_covariances(self, targets: Sequence[Target]) -> tuple[FloatArray, FloatArray]:
+    def _target_covariances(self, path: PathGeometry, targets: Sequence[Target]) -> tuple[FloatArray, FloatArray]:
         """(k, q) covariance of residuals and target gusts in the eigenbasis, and (q,) variance of target gusts."""
-        length_m, path = self._length_m, self._path
+        length_m = self._length_m
         across = [geometry.covariance(length_m) * self._fading for geometry in (path.to_north, path.to_east)]
         within = [geometry.covariance(length_m) * self._fading for geometry in (path.north, path.east)]
         # the residual holds minus the gust along the air velocity

@@ -1,6 +1,6 @@
-"""The fit, linear about a state: residuals of the blocks, their smoothed slopes, priors, and the path in the air mass."""
+"""The fit, linear about a state: residuals of the blocks, smoothed slopes, priors, and the path in the air mass."""
 
-from collections.abc import Iterator, Sequence
+from collections.abc import Sequence
 from dataclasses import dataclass
 
 import numpy as np
@@ -10,6 +10,7 @@ from service.domain.arrays import FloatArray
 from service.domain.results import AirDataSeries, Loiter
 from service.reduction.fit.blocks import Blocks
 from service.reduction.fit.gust_posterior import LinearModel, PathGeometry, Target
+from service.reduction.fit.probe_speed import ProbeSpeed
 from service.reduction.fit.start import DelayPrior, OffsetPrior, Residuals, State
 
 WIND_CHANGE_MPS = 1.5
@@ -18,10 +19,6 @@ WIND_CHANGE_HEIGHT_M = 400.0
 """Winds of two loiters differ by about 0.75 m/s after four minutes and 1.2 m/s over 150 m of height (one sigma)."""
 WIND_DRIFT_MPS_PER_MIN = 0.25
 UNKNOWN_WIND_MPS = 50.0
-LIGHT_WIND_MPS = 2.5
-"""Below it the air flown through depends on the air mass's own motion, which the local mean wind tells only roughly."""
-ADVECTION_DOUBT = 1.1
-"""Standard deviation of that motion about the local mean wind, in units of the residual's root mean square."""
 
 
 @dataclass(frozen=True, slots=True)
@@ -48,15 +45,16 @@ class Columns:
 
 
 def linear_model(
-    series: AirDataSeries, blocks: Blocks, state: State, now: Residuals, offset: OffsetPrior, delay: DelayPrior
+    blocks: Blocks, probe: ProbeSpeed, state: State, now: Residuals, offset: OffsetPrior, delay: DelayPrior
 ) -> LinearModel:
     """Linear model of the block residuals about `state`."""
     columns = Columns(state.wind_mps.shape[0])
     observed = blocks.mean(now.residual_mps)
+    acceleration = probe.acceleration_at(blocks.time_s, state.log_scale, state.zero_offset_pa, state.delay_s)
     slopes = np.zeros((observed.size, columns.count))
     slopes[:, 0] = _over_one_turn(blocks, blocks.mean(now.probe.per_log_scale))
     slopes[:, 1] = _over_one_turn(blocks, blocks.mean(now.probe.per_zero_offset))
-    slopes[:, 2] = _over_one_turn(blocks, blocks.mean(-now.probe.per_second))
+    slopes[:, 2] = _over_one_turn(blocks, blocks.mean(-acceleration))
     direction, minutes = directions(now.air_velocity_mps), _minutes_in_loiter(blocks)
     rows = np.arange(observed.size)
     for axis in (0, 1):
@@ -132,46 +130,23 @@ def air_path(series: AirDataSeries, blocks: Blocks, wind_mps: FloatArray) -> Flo
     return np.column_stack([np.interp(at, time_s, path[:, axis]) for axis in range(3)])
 
 
-def possible_paths(
-    series: AirDataSeries, blocks: Blocks, state: State, now: Residuals, residual_rms_mps: float
-) -> list[PathGeometry]:
-    """Paths in the air mass: one, or five about it where the wind is so light that its own doubt matters.
-
-    The field drifts with the wind of a wide neighbourhood; over one spot only that wind plus the mean gust is seen. Five
-    points stand for the normal distribution of the difference (cubature of degree three with a centre).
-    """
+def path_geometry(series: AirDataSeries, blocks: Blocks, now: Residuals, wind_mps: FloatArray) -> PathGeometry:
+    """The blocks' path if the air mass drifts with `wind_mps` (number of loiters, 2)."""
     direction = directions(blocks.mean(directions(now.air_velocity_mps)))
     averaging_m = blocks.seconds * float(np.median(now.probe.speed_mps))
-    doubt = ADVECTION_DOUBT * residual_rms_mps * np.sqrt(3.0)
-    shifts = [(0.0, 0.0, 1 / 3)]
-    if float(np.hypot(*state.wind_mps.mean(axis=0))) < LIGHT_WIND_MPS:
-        shifts += [(doubt, 0.0, 1 / 6), (-doubt, 0.0, 1 / 6), (0.0, doubt, 1 / 6), (0.0, -doubt, 1 / 6)]
-    return list(_geometries(series, blocks, state, direction, averaging_m, shifts))
-
-
-def _geometries(
-    series: AirDataSeries,
-    blocks: Blocks,
-    state: State,
-    direction: FloatArray,
-    averaging_m: float,
-    shifts: Sequence[tuple[float, float, float]],
-) -> Iterator[PathGeometry]:
     north, east = (np.tile(axis, (direction.shape[0], 1)) for axis in np.eye(3)[:2])
-    for shift_north, shift_east, weight in shifts:
-        path = air_path(series, blocks, state.wind_mps + np.array([shift_north, shift_east]))
-        yield PathGeometry(
-            float(np.log(weight)),
-            gust=GustGeometry(path, direction, averaging_m),
-            to_north=GustGeometry(path, direction, averaging_m, path, north),
-            to_east=GustGeometry(path, direction, averaging_m, path, east),
-            north=GustGeometry(path, north, averaging_m),
-            east=GustGeometry(path, east, averaging_m),
-        )
+    path = air_path(series, blocks, wind_mps)
+    return PathGeometry(
+        gust=GustGeometry(path, direction, averaging_m),
+        to_north=GustGeometry(path, direction, averaging_m, path, north),
+        to_east=GustGeometry(path, direction, averaging_m, path, east),
+        north=GustGeometry(path, north, averaging_m),
+        east=GustGeometry(path, east, averaging_m),
+    )
 
 
 def _over_one_turn(blocks: Blocks, values: FloatArray) -> FloatArray:
-    """Running mean of block values over one turn, within each loiter: quick changes are pushed by the gusts (trap 2)."""
+    """Running mean of block values over one turn, within each loiter: gusts push the quick changes (trap 2)."""
     smooth = values.copy()
     for index in np.unique(blocks.loiter).tolist():
         inside = np.flatnonzero(blocks.loiter == index)

@@ -5,7 +5,7 @@ from dataclasses import dataclass
 import numpy as np
 
 from service.airdata.pitot import true_airspeed_from_impact_pressure, true_airspeed_slope
-from service.domain.arrays import BoolArray, FloatArray
+from service.domain.arrays import BoolArray, FloatArray, IntArray
 from service.domain.results import AirDataSeries
 
 MARGIN_S = 3.0
@@ -19,12 +19,39 @@ LARGEST_PRESSURE_SHARE = 0.85
 
 @dataclass(frozen=True, slots=True)
 class SpeedAtGps:
-    """(m,) true airspeed and its derivatives by ln K, by zero offset and by time at m GPS samples."""
+    """(m,) true airspeed and its derivatives by ln K and by zero offset at m GPS samples."""
 
     speed_mps: FloatArray
     per_log_scale: FloatArray
     per_zero_offset: FloatArray
-    per_second: FloatArray
+
+
+class _Averaging:
+    """Means of the broken line through samples at `from_s` over `half_s` to either side of each of `at_s`.
+
+    Worked out once, for any values: the mean is the difference of the line's integral at both ends.
+    """
+
+    def __init__(self, from_s: FloatArray, at_s: FloatArray, half_s: float) -> None:
+        self._step_s = np.diff(from_s)
+        low, high = (np.clip(at_s + sign * half_s, from_s[0], from_s[-1]) for sign in (-1, 1))
+        self._span_s = high - low
+        self._ends = [self._place(from_s, end) for end in (low, high)]
+
+    def _place(self, from_s: FloatArray, end_s: FloatArray) -> tuple[IntArray, FloatArray]:
+        index = np.clip(np.searchsorted(from_s, end_s) - 1, 0, from_s.size - 2)
+        return index, (end_s - from_s[index]) / self._step_s[index]
+
+    def mean(self, values: FloatArray) -> FloatArray:
+        total = np.concatenate([[0.0], np.cumsum(0.5 * (values[1:] + values[:-1]) * self._step_s)])
+        rise = np.diff(values)
+        integrals = []
+        for index, share in self._ends:
+            ending = values[index] + 0.5 * share * rise[index]
+            integrals.append(total[index] + ending * share * self._step_s[index])
+        index, share = self._ends[0]
+        at_a_point = values[index] + share * rise[index]
+        return np.where(self._span_s > 1e-6, (integrals[1] - integrals[0]) / np.maximum(self._span_s, 1e-6), at_a_point)
 
 
 class ProbeSpeed:
@@ -42,10 +69,7 @@ class ProbeSpeed:
         self._temperature_k = series.air_temperature_k[near]
         interval = float(np.median(np.diff(gps_time_s))) if gps_time_s.size > 1 else 0.2
         self._half_s = 0.5 * min(interval, 1.0)
-
-    @property
-    def reading_pa(self) -> FloatArray:
-        return self._reading_pa
+        self._last: tuple[FloatArray, float, _Averaging] | None = None
 
     def covers(self, gps_time_s: FloatArray, delay_s: float) -> BoolArray:
         """(m,) whether usable probe samples lie close about each GPS time less the delay."""
@@ -55,40 +79,43 @@ class ProbeSpeed:
         after = np.clip(np.searchsorted(self._time_s, at), 1, self._time_s.size - 1)
         gap = self._time_s[after] - self._time_s[after - 1]
         inside = (at >= self._time_s[0] - 0.5) & (at <= self._time_s[-1] + 0.5)
-        return inside & (gap <= LONGEST_BRIDGE_S)
+        return np.asarray(inside & (gap <= LONGEST_BRIDGE_S))
 
     def reading_at(self, gps_time_s: FloatArray, delay_s: float) -> FloatArray:
         """(m,) mean reading about each GPS time. [Pa]"""
-        return self._mean_about(gps_time_s - delay_s, self._reading_pa)
+        return self._averaging(gps_time_s, delay_s).mean(self._reading_pa)
 
     def at(self, gps_time_s: FloatArray, log_scale: float, zero_offset_pa: float, delay_s: float) -> SpeedAtGps:
-        impact_pa = np.exp(log_scale) * (self._reading_pa - zero_offset_pa)
-        positive = np.clip(impact_pa, LEAST_PRESSURE_PA, LARGEST_PRESSURE_SHARE * self._static_pa)
-        speed = true_airspeed_from_impact_pressure(positive, self._static_pa, self._temperature_k)
-        slope = true_airspeed_slope(positive, self._static_pa, self._temperature_k)
-        at = gps_time_s - delay_s
-        step = max(self._half_s, 0.25)
+        """Airspeed and slopes at the GPS times, for ln K, zero offset and delay."""
+        impact_pa = self._impact_pa(log_scale, zero_offset_pa)
+        slope = true_airspeed_slope(impact_pa, self._static_pa, self._temperature_k)
+        averaging = self._averaging(gps_time_s, delay_s)
         return SpeedAtGps(
-            speed_mps=self._mean_about(at, speed),
-            per_log_scale=self._mean_about(at, slope),
-            per_zero_offset=self._mean_about(at, -slope * np.exp(log_scale) / positive),
-            per_second=(self._mean_about(at + step, speed) - self._mean_about(at - step, speed)) / (2 * step),
+            speed_mps=averaging.mean(
+                true_airspeed_from_impact_pressure(impact_pa, self._static_pa, self._temperature_k)
+            ),
+            per_log_scale=averaging.mean(slope),
+            per_zero_offset=averaging.mean(-slope * np.exp(log_scale) / impact_pa),
         )
 
-    def _mean_about(self, at_s: FloatArray, values: FloatArray) -> FloatArray:
-        """Mean of the broken line through `values` over one GPS interval about each of `at_s`."""
-        time_s = self._time_s
-        total = np.concatenate([[0.0], np.cumsum(0.5 * (values[1:] + values[:-1]) * np.diff(time_s))])
-        low = np.clip(at_s - self._half_s, time_s[0], time_s[-1])
-        high = np.clip(at_s + self._half_s, time_s[0], time_s[-1])
-
-        def integral(end_s: FloatArray) -> FloatArray:
-            index = np.clip(np.searchsorted(time_s, end_s) - 1, 0, time_s.size - 2)
-            share = (end_s - time_s[index]) / (time_s[index + 1] - time_s[index])
-            ending = values[index] + share * (values[index + 1] - values[index])
-            return total[index] + 0.5 * (values[index] + ending) * (end_s - time_s[index])
-
-        span = high - low
-        return np.where(
-            span > 1e-6, (integral(high) - integral(low)) / np.maximum(span, 1e-6), np.interp(at_s, time_s, values)
+    def acceleration_at(
+        self, gps_time_s: FloatArray, log_scale: float, zero_offset_pa: float, delay_s: float
+    ) -> FloatArray:
+        """(m,) rate of change of the airspeed. [m/s^2]"""
+        impact_pa = self._impact_pa(log_scale, zero_offset_pa)
+        speed = true_airspeed_from_impact_pressure(impact_pa, self._static_pa, self._temperature_k)
+        step_s = max(self._half_s, 0.25)
+        before, after = (
+            _Averaging(self._time_s, gps_time_s - delay_s + shift, self._half_s).mean(speed)
+            for shift in (-step_s, step_s)
         )
+        return np.asarray((after - before) / (2 * step_s))
+
+    def _impact_pa(self, log_scale: float, zero_offset_pa: float) -> FloatArray:
+        impact_pa = np.exp(log_scale) * (self._reading_pa - zero_offset_pa)
+        return np.asarray(np.clip(impact_pa, LEAST_PRESSURE_PA, LARGEST_PRESSURE_SHARE * self._static_pa))
+
+    def _averaging(self, gps_time_s: FloatArray, delay_s: float) -> _Averaging:
+        if self._last is None or self._last[0] is not gps_time_s or self._last[1] != delay_s:
+            self._last = (gps_time_s, delay_s, _Averaging(self._time_s, gps_time_s - delay_s, self._half_s))
+        return self._last[2]

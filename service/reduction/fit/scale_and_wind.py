@@ -1,9 +1,9 @@
 """The fit: pressure scale, zero offset, GPS delay and wind, with the uncertainty that correlated gusts leave.
 
-Residual of a block: probe's true airspeed minus |ground velocity - wind|, which is minus the gust along the air velocity
-(plus noise). Three measures against known biases (method notes, traps 1 to 4): the noisy GPS side is never the regressor;
-slopes by scale, zero and delay are smoothed over one turn, so that quick changes of speed, which the gusts push, carry no
-weight; the second-order effect of cross gusts is judged and its doubt carried.
+Residual of a block: probe's true airspeed minus |ground velocity - wind|, which is minus the gust along the air
+velocity (plus noise). Three measures against known biases (method notes, traps 1 to 4): the noisy GPS side is never the
+regressor; slopes by scale, zero and delay are smoothed over one turn, so that quick changes of speed, which the gusts
+push, carry no weight; the second-order effect of cross gusts is judged and its doubt carried.
 """
 
 from collections.abc import Sequence
@@ -26,6 +26,7 @@ from service.domain.results import (
 )
 from service.reduction.fit.blocks import Blocks, gather_blocks
 from service.reduction.fit.cross_gusts import cross_gusts
+from service.reduction.fit.drift import field_drift
 from service.reduction.fit.gust_posterior import GustPosterior, gust_posterior
 from service.reduction.fit.linear_model import (
     Columns,
@@ -33,7 +34,7 @@ from service.reduction.fit.linear_model import (
     directions,
     linear_model,
     loiter_means,
-    possible_paths,
+    path_geometry,
     time_shares,
     wind_targets,
 )
@@ -120,11 +121,10 @@ def fit_scale_and_wind(
     delay = clear_delay(probe, blocks, preliminary.state, offset, delay)
     state = start_state(probe, blocks, offset, delay) or preliminary.state
     now = residuals(probe, blocks, state)
-    model = linear_model(series, blocks, state, now, offset, delay)
+    model = linear_model(blocks, probe, state, now, offset, delay)
     rms = max(float(np.sqrt(np.mean(model.observed**2))), RESIDUAL_FLOOR_MPS)
-    posterior = gust_posterior(
-        model, possible_paths(series, blocks, state, now, rms), wind_targets(blocks, loiters), rms
-    )
+    drift = field_drift(series, blocks, state, now, model, rms)
+    posterior = gust_posterior(model, path_geometry(series, blocks, now, drift), wind_targets(blocks, loiters), rms)
     return _result(series, loiters, preliminary, state, now, posterior, offset, offset_source)
 
 

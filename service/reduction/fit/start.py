@@ -48,7 +48,7 @@ class State:
 
 @dataclass(frozen=True, slots=True)
 class Residuals:
-    """Sample residuals (m,) probe minus wind-corrected speed, air velocity (m, 3), and the probe's speed with slopes."""
+    """Sample residuals (m,) probe minus wind-corrected speed, air velocity (m, 3), the probe's speed with slopes."""
 
     residual_mps: FloatArray
     air_velocity_mps: FloatArray
@@ -93,11 +93,12 @@ def without_outliers(probe: ProbeSpeed, blocks: Blocks, state: State) -> Blocks:
 
 def clear_delay(probe: ProbeSpeed, blocks: Blocks, state: State, offset: OffsetPrior, delay: DelayPrior) -> DelayPrior:
     """The delay that the data show beyond doubt (quick changes of speed in calm air), else the prior."""
-    misfit = []
-    for tried in DELAYS_TRIED_S.tolist():
-        trial, rms = _iterate(probe, blocks, replace(state, delay_s=tried), offset, steps=2)
-        misfit.append(rms)
-    rms = np.array(misfit)
+    rms = np.array(
+        [
+            _iterate(probe, blocks, replace(state, delay_s=tried), offset, steps=2)[1]
+            for tried in DELAYS_TRIED_S.tolist()
+        ]
+    )
     at_prior = float(np.interp(delay.value_s, DELAYS_TRIED_S, rms))
     best = int(np.argmin(rms))
     if rms[best] > CLEAR_DELAY_SHARE * at_prior:
@@ -129,7 +130,7 @@ def _common_wind(blocks: Blocks) -> FloatArray:
 def _initial_scales(
     probe: ProbeSpeed, blocks: Blocks, wind: FloatArray, offset: OffsetPrior, delay: DelayPrior
 ) -> list[tuple[float, float]]:
-    """(ln K, zero offset) to start from: at the prior's zero, and where speeds differ from the slope of V^2 in the reading."""
+    """(ln K, zero offset) to start from: at the prior's zero, and from the slope of V^2 where speeds differ."""
     reading = probe.reading_at(blocks.time_s, delay.value_s)
     reference = probe.at(blocks.time_s, 0.0, 0.0, delay.value_s)
     air = blocks.velocity_mps.copy()

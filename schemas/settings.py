@@ -27,11 +27,27 @@ LATEST_S = 1e11
 def listed(schema: type[Schema], description: str) -> Any:
     """A bounded list of `schema`."""
     metadata = {"description": description, "maxItems": MOST_ENTRIES}
-    return fields.List(fields.Nested(schema), validate=_not_too_many, metadata=metadata)
+    return BoundedList(fields.Nested(schema), metadata=metadata)
 
 
-def _not_too_many(entries: list[Any]) -> None:
-    if len(entries) > MOST_ENTRIES:
+class BoundedList(fields.List[Any]):
+    """A list whose length is checked first: reading a million entries only to refuse them takes a minute."""
+
+    def _deserialize(self, value: Any, attr: str | None, data: Any, **kwargs: Any) -> list[Any]:
+        _refuse_too_many(value)
+        return super()._deserialize(value, attr, data, **kwargs)
+
+
+class BoundedDict(fields.Dict):
+    """A mapping whose length is checked first."""
+
+    def _deserialize(self, value: Any, attr: str | None, data: Any, **kwargs: Any) -> Any:
+        _refuse_too_many(value)
+        return super()._deserialize(value, attr, data, **kwargs)  # type: ignore[no-untyped-call]
+
+
+def _refuse_too_many(entries: object) -> None:
+    if isinstance(entries, list | dict) and len(entries) > MOST_ENTRIES:
         raise ValidationError(f"must have at most {MOST_ENTRIES} entries")
 
 
@@ -196,10 +212,9 @@ class SettingsSchema(Strict):
     probe = fields.Nested(ProbeSettingsSchema)
     loiters = listed(WindowSchema, "Where to look for circles or legs; without it they are found.")
     warnings = fields.Nested(WarningSettingsSchema)
-    columns = fields.Dict(
+    columns = BoundedDict(
         keys=Text("Name of a column in the CSV's header.", longest=200),
         values=fields.Nested(ColumnMeaningSchema),
-        validate=_not_too_many,
         metadata={
             "description": "For a CSV with names of its own: column -> quantity and unit.",
             "maxProperties": MOST_ENTRIES,

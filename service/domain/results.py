@@ -280,6 +280,8 @@ class FitResult:
     true_airspeed_by_loiter_mps: tuple[float, ...]
     heading_coverage_deg: float
     airspeed_range_mps: tuple[float, float]
+    loiters_agree: float
+    """Chance that loiters of one scale scatter at least as much as these. [1]"""
     gust_mps: float
     residual_rms_mps: float
     points: FittedPoints

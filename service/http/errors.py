@@ -2,6 +2,7 @@
 
 import logging
 from collections.abc import Mapping
+from itertools import islice
 from typing import Any, NamedTuple
 
 from flask import Flask, Response
@@ -22,6 +23,10 @@ from service.http.failures import (
 from service.log_lines import ROOT, request_id
 
 PROBLEM_JSON = "application/problem+json"
+MOST_ERRORS = 100
+"""Entries of `errors`: what repeats a thousandfold helps nobody, and an answer must not grow with the body."""
+LONGEST_POINTER = 300
+"""Characters of a pointer, for it holds names that the client made up."""
 
 _log = logging.getLogger(ROOT)
 
@@ -107,7 +112,9 @@ def _problem(
 ) -> Response:
     body: dict[str, Any] = {"type": type_, "title": title, "status": status, "detail": detail}
     if errors:
-        body["errors"] = dict(errors)
+        body["errors"] = {pointer[:LONGEST_POINTER]: text for pointer, text in islice(errors.items(), MOST_ERRORS)}
+    if errors and len(errors) > MOST_ERRORS:
+        body["detail"] += f" The first {MOST_ERRORS} of {len(errors)} errors are listed."
     body["request_id"] = request_id.get() or ""
     answer = Response(encode(ProblemSchema().dump(body)), status, mimetype=PROBLEM_JSON)
     answer.headers.update(headers or {})

@@ -68,7 +68,7 @@ def read_batch(path: Path, request: ReadRequest) -> ReadResult:
     body = _body(path, request.limits.batch_bytes)
     request.progress(0.2)
     batch = _decoded(_BATCH, body, "")
-    settings = None if batch.settings is msgspec.UNSET else _decoded(_SETTINGS, batch.settings, "/settings")
+    settings = _settings(batch.settings, request.limits.settings_bytes)
     _refuse_repeated_names(body, batch, settings)
     del body
     complaints = Complaints(_pointer, lambda _stream, index: f"index {index}")
@@ -91,6 +91,14 @@ def _body(path: Path, limit: int) -> bytes:
     if body.startswith(UTF16_MARKS):
         raise UnreadableInput("JSON must be UTF-8 (RFC 8259); this is UTF-16.")
     return body
+
+
+def _settings(text: msgspec.Raw | msgspec.UnsetType, limit: int) -> Any:
+    if text is msgspec.UNSET:
+        return None
+    if len(memoryview(text)) > limit:
+        raise InputTooLarge(f"The settings of a batch may have {limit} bytes.")
+    return _decoded(_SETTINGS, text, "/settings")
 
 
 def _decoded(decoder: msgspec.json.Decoder[Any], text: bytes | msgspec.Raw, pointer: str) -> Any:

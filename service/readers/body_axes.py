@@ -4,8 +4,8 @@ from collections.abc import Callable, Sequence
 from dataclasses import dataclass
 
 import numpy as np
-from scipy import constants
 
+from service.airdata.constants import STANDARD_GRAVITY_MPS2
 from service.domain.arrays import FloatArray
 
 FEWEST_MOVING = 20
@@ -56,7 +56,7 @@ def lift_axis(specific_force_mps2: FloatArray) -> LiftAxis:
 
 def load_factor(specific_force_mps2: FloatArray, lift: LiftAxis) -> FloatArray:
     """(n,) load factor from the specific force along the lift axis. [m/s2] -> [1]"""
-    return specific_force_mps2 * (lift.sign / constants.g)
+    return specific_force_mps2 * (lift.sign / STANDARD_GRAVITY_MPS2)
 
 
 def euler_angles(

@@ -15,6 +15,8 @@ class ReadingLimits:
 
     batch_bytes: int = 64 * 1024 * 1024
     """Body of a JSON batch. Decoding takes six to eight times as much memory; larger logs come as table or log file."""
+    settings_bytes: int = 1024 * 1024
+    """Settings within a batch."""
     samples_per_stream: int = 5_000_000
     """Samples of one stream: 83 minutes at 1 kHz, 14 hours at 100 Hz."""
     table_rows: int = 5_000_000

@@ -7,7 +7,7 @@ These names are the log's own and stand nowhere else. Each entry says how a fiel
 from collections.abc import Mapping
 from dataclasses import dataclass
 
-from scipy.constants import zero_Celsius
+from service.airdata.constants import ZERO_CELSIUS_K
 
 
 @dataclass(frozen=True, slots=True)
@@ -36,7 +36,7 @@ SAMPLE_TIME = LogField("timestamp_sample", "uint64_t", 1e-6)
 
 
 def _kelvin(name: str) -> LogField:
-    return LogField(name, "float", 1.0, zero_Celsius)
+    return LogField(name, "float", 1.0, ZERO_CELSIUS_K)
 
 
 PROBE_TOPICS = (

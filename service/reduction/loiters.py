@@ -19,7 +19,7 @@ from service.domain.settings import Window
 from service.domain.spans import runs
 
 SMOOTHING_S = 2.0
-SHORTEST_LOITER_TURN_DEG = 300.0
+SHORTEST_LOITER_TURN_DEG = 350.0
 SLOWEST_TURN_DEG_PER_S = 0.8
 """A circle of 450 s: slower ones are told from a wandering straight leg only by luck."""
 REVERSAL_DEG = 40.0

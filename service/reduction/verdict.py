@@ -25,6 +25,8 @@ WIDEST_HALF_WIDTH = 0.3
 SCALE_RANGE = (0.05, 5.0)
 LARGEST_RESIDUAL_SHARE = 0.25
 """Of the airspeed: probe and GPS then don't tell of one motion."""
+DISAGREEING_LOITERS = 0.003
+"""Chance of the loiters' scatter below which they contradict one another."""
 FEW_TURNS = 3.0
 
 
@@ -140,6 +142,14 @@ def _doubts(
                 Reason.INTERVAL_WIDE,
                 f"The 95 % interval of the speed scale is ±{half_width:.3f}, wider than ±{ACCEPTED_HALF_WIDTH}: "
                 f"{_remedy(fit)}.",
+            )
+        )
+    if fit.loiters_agree < DISAGREEING_LOITERS:
+        doubts.append(
+            ReasonGiven(
+                Reason.LOITERS_DISAGREE,
+                "The scale differs from loiter to loiter by more than the gusts explain: look for a probe that feels "
+                "speed, slip or moisture, and fly again.",
             )
         )
     turns = sum(loiter.turns for loiter in loiters if loiter.used and loiter.direction is not Direction.STRAIGHT)

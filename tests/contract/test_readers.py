@@ -188,6 +188,10 @@ def test_next_to_nothing_is_unreadable(read: Read, content: bytes) -> None:
     assert isinstance(read(content), UnreadableInput)
 
 
+def test_an_empty_body_is_called_so(read: Read) -> None:
+    assert "empty" in str(read(b""))
+
+
 @pytest.mark.parametrize(
     "content", [b"PK\x03\x04" + bytes(100), b"\x1f\x8b" + bytes(100), b"\x89PNG\r\n\x1a\n" + bytes(99)]
 )

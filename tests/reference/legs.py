@@ -7,16 +7,22 @@ import numpy as np
 
 from service.airdata.atmosphere import standard_pressure_from_altitude, standard_temperature_from_altitude
 from service.airdata.pitot import impact_pressure_from_true_airspeed
-from service.domain.arrays import FloatArray
-from service.domain.codes import LogFormat
+from service.domain.arrays import FloatArray, IntArray
+from service.domain.codes import LogFormat, ZeroOffsetSource
 from service.domain.log import DecodedLog, GpsSamples, ProbeSamples, StaticSamples, TemperatureSamples
-from service.domain.results import Reduction
+from service.domain.results import AirDataSeries, FitResult, Reduction
 from service.domain.settings import ProbeSettings, Settings
 from service.pipeline import reduce_flight
+from service.reduction.fit import DelayPrior, OffsetPrior, PreliminaryFit, fit_scale_and_wind, preliminary_fit
+from service.reduction.loiters import find_loiters
+from service.reduction.series import build_series
 
 KNOT_MPS = 1852.0 / 3600.0
-DITHER_PA = 0.1
-"""Unrest of the reading, up and down by turns: a live sensor never repeats itself to the last digit."""
+WANDER_SHARE = 0.006
+"""Amplitude of the reading's wander on each leg, in whole waves, so that its mean is the example's: air never stands
+still, and a reading without any gust is rightly taken for a blocked probe."""
+WAVE_S = 9.0
+PROBE_HZ = 20.0
 STILL_AIR_ZERO = Settings(probe=ProbeSettings(zero_offset_pa=0.0, zero_offset_uncertainty_pa=1e-3))
 
 
@@ -41,35 +47,38 @@ def standard_reading(true_airspeed_mps: float, altitude_m: float, pressure_scale
     return float(impact_pressure_from_true_airspeed(true_airspeed_mps, pressure, temperature)) / pressure_scale
 
 
-def log_of_legs(legs: Sequence[Leg], altitude_m: float = 0.0, leg_s: float = 45.0, rate_hz: float = 5.0) -> DecodedLog:
+def log_of_legs(
+    legs: Sequence[Leg],
+    altitude_m: float = 0.0,
+    leg_s: float = 45.0,
+    gps_hz: float = 5.0,
+    wander_share: float = WANDER_SHARE,
+) -> DecodedLog:
     """The legs one after another in the standard atmosphere at one altitude, without noise."""
-    each = round(leg_s * rate_hz)
-    time_s = np.arange(each * len(legs)) / rate_hz
-    constant = np.ones(time_s.size)
-    dither = DITHER_PA * (-1.0) ** np.arange(time_s.size)
-
-    def held(values: Sequence[float]) -> FloatArray:
-        return np.repeat(np.asarray(values, dtype=np.float64), each)
-
+    probe_s, probe_leg = _times(len(legs), leg_s, PROBE_HZ)
+    gps_s, gps_leg = _times(len(legs), leg_s, gps_hz)
+    waves = max(round(leg_s / WAVE_S), 1)
+    wander = 1.0 + wander_share * np.sin(2.0 * np.pi * waves * probe_s / leg_s)
+    reading = np.array([leg.reading_pa for leg in legs])[probe_leg]
+    static_pa = np.full(probe_s.size, standard_pressure_from_altitude(altitude_m))
+    temperature_k = np.full(probe_s.size, standard_temperature_from_altitude(altitude_m))
     return DecodedLog(
         format=LogFormat.BATCH,
         sha256="0" * 64,
         start_utc=None,
         truncated=False,
         time_steps_back=0,
-        probe=ProbeSamples(time_s, held([leg.reading_pa for leg in legs]) + dither, "probe"),
-        static=StaticSamples(time_s, constant * float(standard_pressure_from_altitude(altitude_m)), "static"),
-        temperature=TemperatureSamples(
-            time_s, constant * float(standard_temperature_from_altitude(altitude_m)), None, "thermometer", 0.01
-        ),
+        probe=ProbeSamples(probe_s, reading * wander, "probe"),
+        static=StaticSamples(probe_s, static_pa, "static"),
+        temperature=TemperatureSamples(probe_s, temperature_k, None, "thermometer", 0.01),
         gps=GpsSamples(
-            time_s=time_s,
-            velocity_north_mps=held([leg.velocity_north_mps for leg in legs]),
-            velocity_east_mps=held([leg.velocity_east_mps for leg in legs]),
-            velocity_down_mps=0.0 * constant,
+            time_s=gps_s,
+            velocity_north_mps=np.array([leg.velocity_north_mps for leg in legs])[gps_leg],
+            velocity_east_mps=np.array([leg.velocity_east_mps for leg in legs])[gps_leg],
+            velocity_down_mps=np.zeros(gps_s.size),
             latitude_deg=None,
             longitude_deg=None,
-            altitude_m=altitude_m * constant,
+            altitude_m=np.full(gps_s.size, altitude_m),
             speed_uncertainty_mps=None,
             source="GPS",
         ),
@@ -79,6 +88,29 @@ def log_of_legs(legs: Sequence[Leg], altitude_m: float = 0.0, leg_s: float = 45.
     )
 
 
+def _times(legs: int, leg_s: float, rate_hz: float) -> tuple[FloatArray, IntArray]:
+    """Sample times, the same on every leg and about its middle, and the leg of each."""
+    each = round(leg_s * rate_hz)
+    index = np.arange(each * legs, dtype=np.int64)
+    return np.asarray((index + 0.5) / rate_hz, dtype=np.float64), index // each
+
+
 def reduce_legs(legs: Sequence[Leg], altitude_m: float = 0.0, leg_s: float = 45.0) -> Reduction:
     """Answer of the service, the zero offset given as 0."""
     return reduce_flight(log_of_legs(legs, altitude_m, leg_s), STILL_AIR_ZERO)
+
+
+def fit_legs(log: DecodedLog) -> FitResult:
+    """Answer of the fit alone, whatever the headings cover; zero offset 0 and GPS in time."""
+    assert log.probe is not None
+    nothing = np.empty((0, 2))
+    return fit_series(build_series(log, log.probe, nothing, nothing))
+
+
+def fit_series(series: AirDataSeries) -> FitResult:
+    """As `fit_legs`, of a series in the air."""
+    loiters = find_loiters(series)
+    offset, delay = OffsetPrior(0.0, 1e-3), DelayPrior(0.0, 1e-3)
+    first = preliminary_fit(series, np.ones(series.time_s.size, dtype=bool), loiters, offset, delay)
+    assert isinstance(first, PreliminaryFit), first
+    return fit_scale_and_wind(series, loiters, first, offset, ZeroOffsetSource.GIVEN, delay)

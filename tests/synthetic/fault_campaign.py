@@ -2,6 +2,7 @@
 
     python -m tests.synthetic.fault_campaign --flights 100           every kind, every good family
     python -m tests.synthetic.fault_campaign --flights 500 --clean   false alarms alone
+    python -m tests.synthetic.fault_campaign --before-fit            without the fit, so without leaks: much quicker
 
 Each flight of a good family is looked at without a fault, with one of each kind at a random time in the air, and with
 those that make a flight worthless from start to end. Prints, by kind, how many were found, how many of their spans are
@@ -120,24 +121,27 @@ def good_families() -> tuple[str, ...]:
 
 
 def campaign(
-    families: Iterable[str], flights: int, seed: int, kinds: Iterable[FaultKind]
+    families: Iterable[str], flights: int, seed: int, kinds: Iterable[FaultKind], *, fit: bool = True
 ) -> tuple[dict[str, Score], dict[str, Counter[str]]]:
     """Scores by row name, and kinds of false alarms by family (`flights` counts the sound flights looked at)."""
     scores: dict[str, Score] = {}
     alarms: dict[str, Counter[str]] = {}
-    wanted = tuple(kinds)
+    wanted = tuple(kind for kind in kinds if fit or kind is not FaultKind.LEAK)
     for family in families:
         alarms[family] = Counter()
         for flight in simulate_each(family, flights, seed):
-            told = {str(fault.fault) for fault in reduce_flight(flight.log, flight.settings).faults}
+            told = {str(fault.fault) for fault in _told(flight, fit)}
             alarms[family].update({"flights": 1, "alarmed": int(bool(told)), **dict.fromkeys(told, 1)})
             for name, broken in with_faults(flight, wanted, seed):
                 if not _changes_anything(flight, broken):
                     continue
-                leaks = broken.faults[0].fault is FaultKind.LEAK
-                found = reduce_flight(broken.log, broken.settings).faults if leaks else faults_before_fit(broken)
+                found = _told(broken, broken.faults[0].fault is FaultKind.LEAK)
                 scores.setdefault(name, Score()).add(flight, broken, found)
     return scores, alarms
+
+
+def _told(flight: SimulatedFlight, fit: bool) -> tuple[Fault, ...]:
+    return reduce_flight(flight.log, flight.settings).faults if fit else faults_before_fit(flight)
 
 
 def _changes_anything(sound: SimulatedFlight, broken: SimulatedFlight) -> bool:
@@ -156,10 +160,13 @@ def main(arguments: list[str] | None = None) -> int:
     parser.add_argument("--flights", type=int, default=20, help="of each family")
     parser.add_argument("--seed", type=int, default=1)
     parser.add_argument("--clean", action="store_true", help="sound flights alone")
+    parser.add_argument("--before-fit", action="store_true", help="neither fit nor leaks")
     parser.add_argument("--kinds", nargs="*", type=FaultKind, default=tuple(FaultKind))
     chosen = parser.parse_args(arguments)
     families = chosen.families or good_families()
-    scores, alarms = campaign(families, chosen.flights, chosen.seed, () if chosen.clean else chosen.kinds)
+    scores, alarms = campaign(
+        families, chosen.flights, chosen.seed, () if chosen.clean else chosen.kinds, fit=not chosen.before_fit
+    )
     if scores:
         print(f"{'fault':22s} {'flights':>6s} {'found %':>6s} {'3 s %':>6s} {'30 s %':>6s}")
     for name, score in scores.items():

@@ -21,11 +21,11 @@ from service.reduction.faults.scale_levels import levels_of_spans
 
 FEWEST_POINTS = 24
 ONE_EDGE = 5.5
-TWO_EDGES = 6.5
+TWO_EDGES = 7.0
 """Deviations at which a step is told: of a leak that stays, and of one that closes again, which has more ways to be."""
-LEAST_LEVEL = 2.0
+LEAST_LEVEL = 3.0
 """Deviations that the level alone must show."""
-LARGEST_DISAGREEMENT = 9.0
+LARGEST_DISAGREEMENT = 16.0
 """Chi-square of level and edges about their mean."""
 LEAST_STEP = 0.02
 """Of speed: smaller ones are not worth a word."""
@@ -67,13 +67,22 @@ def find_scale_step(
     if found is None:
         return None
     start, end, step = found
-    start_s = loiters[0].start_s if start == 0 else _time_of(opening, time_s, start)
-    end_s = loiters[-1].end_s if end == time_s.size else _time_of(closing, time_s, end)
+    first_s, last_s = _flown(series, loiters)
+    start_s = first_s if start == 0 else _time_of(opening, time_s, start)
+    end_s = last_s if end == time_s.size else _time_of(closing, time_s, end)
     message = (
         f"From {start_s:.1f} s to {end_s:.1f} s the probe reads {100 * -np.expm1(2 * step):.0f} % less pressure than "
         "in the rest of the flight at the same airspeed. A leak, water or dirt in the lines is likely: test them."
     )
     return Fault(FaultKind.LEAK, "probe", start_s, end_s, message)
+
+
+def _flown(series: AirDataSeries | None, loiters: tuple[Loiter, ...]) -> tuple[float, float]:
+    """First and last time in the air, to which a leak reaches that neither opens nor closes in the loiters. [s]"""
+    if series is None or series.on_ground.all():
+        return loiters[0].start_s, loiters[-1].end_s
+    flown = series.time_s[~series.on_ground]
+    return float(flown[0]), float(flown[-1])
 
 
 def _edges(series: AirDataSeries | None, usable: BoolArray | None, fit: FitResult) -> Edges:

@@ -21,10 +21,11 @@ LIVES_S = (np.inf, 60.0, 15.0)
 """In which a gust at one place in the air mass is another; in still air circles meet the same gusts again and again."""
 NOISE_SHARE = 0.03
 """Of the gust's variance: what GPS and sensor noise leave in a point."""
+SLOWEST_MPS = 1.0
 LEAST_VARIANCE = 1e-12
 LEAST_STRENGTH = 1e-6
-LEAST_INFORMATION = 1e-6
-"""Of the largest: a span that holds next to all points, or none, tells no step."""
+LEAST_INFORMATION = 0.01
+"""Of the largest: a span that holds next to all points, or none, or all of one airspeed, tells no step."""
 
 
 @dataclass(frozen=True, slots=True)
@@ -80,8 +81,9 @@ def _generalised(gusts: FloatArray, residual: FloatArray, nuisance: FloatArray) 
 
 
 def _nuisance(points: FittedPoints, directions: FloatArray) -> FloatArray:
-    """(k, p) orthonormal: what a wrong scale, and a wrong or drifting wind in each loiter, add to the residuals."""
-    columns = [points.wind_corrected_speed_mps]
+    """(k, p) orthonormal: what a wrong scale or zero, and a wrong or drifting wind in each loiter, add to the residuals."""
+    # A wrong zero offset changes the speed by its pressure over the speed.
+    columns = [points.wind_corrected_speed_mps, 1.0 / np.maximum(points.wind_corrected_speed_mps, SLOWEST_MPS)]
     for loiter in np.unique(points.loiter):
         inside = points.loiter == loiter
         time = points.time_s - points.time_s[inside].mean()

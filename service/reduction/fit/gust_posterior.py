@@ -75,6 +75,8 @@ class GustPosterior:
     """(g,)"""
     intensity_mps: FloatArray
     """(g,)"""
+    noise_mps: FloatArray
+    """(g,)"""
     length_m: FloatArray
     """(g,)"""
     mean: FloatArray
@@ -110,14 +112,42 @@ def field_evidence(
     model: LinearModel, gust: GustGeometry, intensity_mps: float, noise_mps: float, length_m: float = MEDIAN_LENGTH_M
 ) -> float:
     """Log restricted likelihood of `model` in one frozen field, less a constant."""
+    x, y, log_determinant = _whitened(model, model.design, gust, intensity_mps, noise_mps, length_m)
+    information, moment = x.T @ x + model.prior_precision, x.T @ y
+    square = y @ y - moment @ np.linalg.solve(information, moment)
+    return float(-0.5 * (log_determinant + np.linalg.slogdet(information)[1] + square))
+
+
+def disagreement(
+    model: LinearModel, extra: FloatArray, gust: GustGeometry, intensity_mps: float, noise_mps: float, length_m: float
+) -> float:
+    """Chi-square of the contrasts that free coefficients of `extra` (k, c) would show in one frozen field."""
+    if extra.shape[1] == 0:
+        return 0.0
+    design = np.column_stack([model.design, extra])
+    x, y, _ = _whitened(model, design, gust, intensity_mps, noise_mps, length_m)
+    information = x.T @ x
+    known = model.design.shape[1]
+    information[:known, :known] += model.prior_precision
+    covariance = np.linalg.inv(information)
+    contrasts = (covariance @ (x.T @ y))[known:]
+    return float(contrasts @ np.linalg.solve(covariance[known:, known:], contrasts))
+
+
+def _whitened(
+    model: LinearModel,
+    design: FloatArray,
+    gust: GustGeometry,
+    intensity_mps: float,
+    noise_mps: float,
+    length_m: float,
+) -> tuple[FloatArray, FloatArray, float]:
+    """Design and centred observations freed of their covariance in one frozen field, and its log determinant."""
     covariance = intensity_mps**2 * gust.covariance(length_m) + noise_mps**2 * np.diag(model.noise)
     factor = linalg.cholesky(covariance, lower=True, check_finite=False, overwrite_a=True)
     centred = model.observed - model.design @ model.prior_mean
-    white = linalg.solve_triangular(factor, np.column_stack([model.design, centred]), lower=True, check_finite=False)
-    x, y = white[:, :-1], white[:, -1]
-    information, moment = x.T @ x + model.prior_precision, x.T @ y
-    square = y @ y - moment @ np.linalg.solve(information, moment)
-    return float(-np.log(np.diag(factor)).sum() - 0.5 * (np.linalg.slogdet(information)[1] + square))
+    white = linalg.solve_triangular(factor, np.column_stack([design, centred]), lower=True, check_finite=False)
+    return white[:, :-1], white[:, -1], 2 * float(np.log(np.diag(factor)).sum())
 
 
 def gust_posterior(
@@ -197,6 +227,7 @@ class _FieldNodes:
         return GustPosterior(
             weight=weight,
             intensity_mps=intensity,
+            noise_mps=self.noise_mps[nodes],
             length_m=np.full(nodes.size, self._length_m),
             mean=mean,
             covariance=covariance,

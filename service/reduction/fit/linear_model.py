@@ -52,8 +52,10 @@ def linear_model(
     observed = blocks.mean(now.residual_mps)
     acceleration = probe.acceleration_at(blocks.time_s, state.log_scale, state.zero_offset_pa, state.delay_s)
     slopes = np.zeros((observed.size, columns.count))
-    slopes[:, 0] = _over_one_turn(blocks, blocks.mean(now.probe.per_log_scale))
-    slopes[:, 1] = _over_one_turn(blocks, blocks.mean(now.probe.per_zero_offset))
+    trust = _trust_in_changes(blocks, blocks.mean(now.probe.speed_mps), observed)
+    for column, slope in ((0, now.probe.per_log_scale), (1, now.probe.per_zero_offset)):
+        steady = _over_one_turn(blocks, blocks.mean(slope))
+        slopes[:, column] = steady.mean() + trust * (steady - steady.mean())
     slopes[:, 2] = _over_one_turn(blocks, blocks.mean(-acceleration))
     direction, minutes = directions(now.air_velocity_mps), _minutes_in_loiter(blocks)
     rows = np.arange(observed.size)
@@ -156,6 +158,16 @@ def _over_one_turn(blocks: Blocks, values: FloatArray) -> FloatArray:
         high = np.minimum(np.arange(inside.size) + half + 1, inside.size)
         smooth[inside] = (total[high] - total[low]) / (high - low)
     return smooth
+
+
+def _trust_in_changes(blocks: Blocks, speed_mps: FloatArray, observed: FloatArray) -> float:
+    """Share of the slow changes of airspeed that was commanded, 0 to 1: what gusts alone would show is no evidence.
+
+    Such changes tell scale from zero offset. Those of the size of the residuals are the gusts' own, and correlated with
+    the residuals: leaning on them finds zero offsets that are not there (trap 2).
+    """
+    slow = _over_one_turn(blocks, speed_mps)
+    return max(1.0 - float(np.mean(observed**2)) / max(float(np.var(slow)), 1e-12), 0.0)
 
 
 def _minutes_in_loiter(blocks: Blocks) -> FloatArray:

@@ -10,6 +10,7 @@ from collections.abc import Sequence
 from dataclasses import dataclass
 
 import numpy as np
+from scipy import stats
 
 from service.airdata.pitot import calibrated_airspeed_from_impact_pressure
 from service.domain.arrays import BoolArray, FloatArray, IntArray
@@ -27,7 +28,13 @@ from service.domain.results import (
 from service.reduction.fit.blocks import Blocks, gather_blocks
 from service.reduction.fit.cross_gusts import cross_gusts
 from service.reduction.fit.drift import field_drift
-from service.reduction.fit.gust_posterior import GustPosterior, gust_posterior
+from service.reduction.fit.gust_posterior import (
+    GustPosterior,
+    LinearModel,
+    PathGeometry,
+    disagreement,
+    gust_posterior,
+)
 from service.reduction.fit.linear_model import (
     Columns,
     air_path,
@@ -53,6 +60,12 @@ from service.reduction.fit.start import (
 
 FEWEST_BLOCKS = 8
 RESIDUAL_FLOOR_MPS = 0.004
+OFFSET_STEPS = 41
+"""Offsets into which each node is split, over four standard deviations to either side."""
+UNLIKELY_SCATTER = 0.1
+"""Chance below which the scatter of the loiters' scales widens the interval."""
+GPS_DRIFT_MPS = 0.007
+"""What is left of a receiver's slow velocity error after minutes: about 0.01 kt (check values, section h)."""
 FITTED_ZERO_SHARE = 0.5
 """The zero counts as fitted where the data halve its prior uncertainty."""
 
@@ -124,8 +137,40 @@ def fit_scale_and_wind(
     model = linear_model(blocks, probe, state, now, offset, delay)
     rms = max(float(np.sqrt(np.mean(model.observed**2))), RESIDUAL_FLOOR_MPS)
     drift = field_drift(series, blocks, state, now, model, rms)
-    posterior = gust_posterior(model, path_geometry(series, blocks, now, drift), wind_targets(blocks, loiters), rms)
-    return _result(series, loiters, preliminary, state, now, posterior, offset, offset_source)
+    path = path_geometry(series, blocks, now, drift)
+    posterior = gust_posterior(model, path, wind_targets(blocks, loiters), rms)
+    consistency, widening = _loiters_agree(blocks, model, path, posterior)
+    scale = _log_scale(series, blocks, probe, state, now, posterior, log_density_uncertainty(series), widening)
+    return _result(series, loiters, preliminary, state, scale, consistency, posterior, offset, offset_source)
+
+
+def _loiters_agree(
+    blocks: Blocks, model: LinearModel, path: PathGeometry, posterior: GustPosterior
+) -> tuple[float, float]:
+    """Chance that loiters of one scale scatter as these do, and the variance factor for those that scatter too much.
+
+    Birge's ratio: where the loiters' own scales differ beyond what the gusts explain (a probe that feels speed, slip or
+    flow angle), the variance is raised by chi-square over its degrees of freedom.
+    """
+    present = np.unique(blocks.loiter)
+    extra = np.column_stack(
+        [np.where(blocks.loiter == index, model.design[:, 0], 0.0) for index in present[1:].tolist()]
+        or [np.empty((blocks.loiter.size, 0))]
+    )
+    best = int(np.argmax(posterior.weight))
+    square = disagreement(
+        model,
+        extra,
+        path.gust,
+        float(posterior.intensity_mps[best]),
+        float(posterior.noise_mps[best]),
+        float(posterior.length_m[best]),
+    )
+    freedom = present.size - 1
+    if freedom == 0:
+        return 1.0, 1.0
+    chance = float(stats.chi2.sf(square, freedom))
+    return chance, max(square / freedom, 1.0) if chance < UNLIKELY_SCATTER else 1.0
 
 
 def _result(
@@ -133,15 +178,14 @@ def _result(
     loiters: Sequence[Loiter],
     preliminary: PreliminaryFit,
     state: State,
-    now: Residuals,
+    scale: Estimate,
+    consistency: float,
     posterior: GustPosterior,
     offset: OffsetPrior,
     offset_source: ZeroOffsetSource,
 ) -> FitResult:
     probe, blocks = preliminary.probe, preliminary.blocks
     columns, expected, covariance = Columns(len(loiters)), posterior.expected(), posterior.spread()
-    density = log_density_uncertainty(series)
-    scale = _log_scale(series, blocks, probe, state, now, posterior, density)
     fitted = State(
         state.log_scale + scale.value,
         state.zero_offset_pa + float(expected[1]),
@@ -160,7 +204,7 @@ def _result(
         pressure_scale=float(np.exp(fitted.log_scale)),
         zero_offset_pa=fitted.zero_offset_pa,
         covariance=scale_covariance,
-        log_density_uncertainty=density,
+        log_density_uncertainty=log_density_uncertainty(series),
         coverage_factor_95=(scale.interval_95[1] - scale.interval_95[0]) / (2 * scale.standard_uncertainty),
         zero_offset_source=ZeroOffsetSource.FITTED if zero_found else offset_source,
         gps_delay_s=normal_estimate(fitted.delay_s, float(np.sqrt(covariance[2, 2]))),
@@ -175,6 +219,7 @@ def _result(
         ),
         heading_coverage_deg=_coverage(final),
         airspeed_range_mps=_airspeed_range(blocks, probe, fitted),
+        loiters_agree=consistency,
         gust_mps=float(posterior.weight @ posterior.intensity_mps),
         residual_rms_mps=float(np.sqrt(np.mean(blocks.mean(final.residual_mps) ** 2))),
         points=_points(blocks, final),
@@ -196,6 +241,7 @@ def _log_scale(
     now: Residuals,
     posterior: GustPosterior,
     density: float,
+    widening: float,
 ) -> Estimate:
     """Change of ln K against the state: gusts, zero offset (not linear where it is large), cross gusts, density."""
     speed = float(np.median(now.probe.speed_mps))
@@ -210,7 +256,7 @@ def _log_scale(
     # a change of speed by x changes ln K by 2 x / V; the cross gusts' mean residual is value * intensity^2 / V
     per_share = 2 * posterior.intensity_mps**2 / max(speed, 1.0) ** 2
     mean = posterior.mean[:, 0] - cross.value * per_share
-    variance = posterior.covariance[:, 0, 0] + (cross.standard_uncertainty * per_share) ** 2 + density**2
+    variance = widening * posterior.covariance[:, 0, 0] + (cross.standard_uncertainty * per_share) ** 2 + density**2
     signal = float(np.median(probe.reading_at(blocks.time_s, state.delay_s))) - state.zero_offset_pa
     return _with_offset_curvature(posterior, mean, variance, signal)
 
@@ -218,8 +264,9 @@ def _log_scale(
 def _with_offset_curvature(
     posterior: GustPosterior, mean: FloatArray, variance: FloatArray, signal_pa: float
 ) -> Estimate:
-    """ln K bends with the zero offset as -ln(signal - offset): each node is split into five by its offset."""
-    abscissas, shares = np.polynomial.hermite_e.hermegauss(5)
+    """ln K bends with the zero offset as -ln(signal - offset): each node is split by its offset."""
+    abscissas = np.linspace(-4.0, 4.0, OFFSET_STEPS)
+    shares = np.exp(-0.5 * abscissas**2)
     shares = shares / shares.sum()
     deviation = np.sqrt(posterior.covariance[:, 1, 1])
     slope = posterior.covariance[:, 0, 1] / posterior.covariance[:, 1, 1]
@@ -237,7 +284,7 @@ def _with_offset_curvature(
 def _winds(posterior: GustPosterior, state: State, loiters: Sequence[Loiter], blocks: Blocks) -> list[WindEstimate]:
     """Of all used loiters, then of each."""
     levels = [time_shares(blocks, loiters) @ state.wind_mps, *state.wind_mps]
-    deviations = np.sqrt(np.maximum(posterior.target_variance, 1e-12))
+    deviations = np.sqrt(np.maximum(posterior.target_variance, 0.0) + GPS_DRIFT_MPS**2)
     winds = []
     for index, level in enumerate(levels):
         north, east = (

@@ -263,6 +263,21 @@ def test_blocks_join_without_a_seam(tmp_path: Path, monkeypatch: pytest.MonkeyPa
     assert f"Line {line}, column 1: 'ten'" in str(error)
 
 
+@pytest.mark.parametrize("characters", [1, 1 << 20])
+def test_the_one_time_axis_rises_for_all_streams_together(
+    tmp_path: Path, monkeypatch: pytest.MonkeyPatch, characters: int
+) -> None:
+    monkeypatch.setattr("service.readers.table.BLOCK_CHARACTERS", characters)
+    for second in ("0", "-1"):
+        error = refused(tmp_path, f"{HEADER}\n0,100,,\n{second},,10,1\n")
+        assert "line 3" in str(error)
+
+
+def test_a_heading_may_hold_delimiters(tmp_path: Path) -> None:
+    text = f'"a;b;c;d;e;f;g",{HEADER},"p,q"\nx,0,100,10,1,\n,0.5,101.5,,,y\n,1,102,12,1,\n'
+    assert rows(read(tmp_path, text)) == WANTED
+
+
 CELLS = st.one_of(
     st.floats(allow_nan=False, allow_infinity=False, width=32).map(repr),
     st.integers(-(10**20), 10**20).map(str),

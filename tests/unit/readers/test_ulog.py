@@ -123,6 +123,19 @@ def test_of_live_probes_the_one_with_more_samples_is_chosen(tmp_path: Path) -> N
     assert "fewer samples" in notes[1].reason
 
 
+def test_of_live_gps_sources_the_one_with_more_samples_is_chosen(tmp_path: Path) -> None:
+    assert FLIGHT.gps is not None
+    values = gps_values(FLIGHT, FLIGHT.gps)
+    fewer = {name: column[::2] for name, column in values.items()}
+    streams = [
+        stream(table.GPS_TOPICS[0], FLIGHT.gps.time_s[::2], fewer, Variant()),
+        stream(table.GPS_TOPICS[1], FLIGHT.gps.time_s, values, Variant()),
+    ]
+    gps = from_streams(tmp_path, streams).gps
+    assert gps is not None
+    assert gps.time_s.size == 300
+
+
 def test_a_dead_probe_alone_is_handed_on_for_the_faults_to_name(tmp_path: Path) -> None:
     assert FLIGHT.probe is not None
     flat = replace(FLIGHT, probe=replace(FLIGHT.probe, impact_pressure_pa=np.full(600, 55.0)))

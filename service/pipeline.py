@@ -76,6 +76,7 @@ def reduce_flight(log: DecodedLog, settings: Settings, *, progress: Progress | N
         log_gaps=log.gaps,
         sensors=log.sensors,
         full_scale_pa=settings.probe.full_scale_pa,
+        given_zero_pa=settings.probe.zero_offset_pa,
         static=log.static,
     )
     told(0.2)
@@ -232,7 +233,7 @@ def _with_fitted_speed(loiters: tuple[Loiter, ...], fit: FitResult) -> tuple[Loi
 
 def _remarks(log: DecodedLog, faults: FaultReport) -> list[ReasonGiven]:
     remarks = []
-    if faults.probe_faulty.any() or faults.static_faulty.any():
+    if faults.faults:
         remarks.append(
             ReasonGiven(Reason.PROBE_FAULT, "Spans with sensor faults were left out of the fit; see the faults.")
         )

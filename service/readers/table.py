@@ -75,8 +75,10 @@ class _TableText:
             text += rest
             if not text:
                 return
-            lines = (text if text.endswith("\n") else self._without_cut_line(text)).split("\n")
+            lines = text.split("\n")
+            # before all else: a line too long for one read looks like one that is cut
             self._check_length(lines, number)
+            self._leave_out_cut_line(lines)
             yield number, lines
             number, pending = number + text.count("\n"), ""
 
@@ -85,12 +87,14 @@ class _TableText:
             line = number + next(index for index, text in enumerate(lines) if len(text) > self._limit)
             raise InputTooLarge(f"Line {line} is longer than {self._limit} characters.")
 
-    def _without_cut_line(self, text: str) -> str:
-        head, end, last = text.rpartition("\n")
+    def _leave_out_cut_line(self, lines: list[str]) -> None:
+        """The last of `lines` is what stands behind the last line end: nothing, or a line that may be cut."""
+        last = lines[-1]
         delimiter, width = self._layout.delimiter, len(self._layout.header)
         cells = len(last.split()) if delimiter is None else last.count(delimiter) + 1
         self.cut = bool(last.strip()) and cells < width
-        return head + end if self.cut else text
+        if self.cut:
+            lines[-1] = ""
 
 
 @dataclass

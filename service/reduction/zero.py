@@ -20,7 +20,7 @@ from service.domain.spans import runs
 
 COMPENSATED_PRIOR_PA = 1.0
 """A probe whose zero was taken before flight (method notes: N(0, 1 Pa))."""
-RAW_PRIOR_PA = (45.0, 50.0)
+RAW_PRIOR_PA = (60.0, 45.0)
 """Value and uncertainty of a raw sensor's zero: 5 to 50 Pa is common practice, 60 to 120 Pa were seen."""
 GIVEN_PA = 0.5
 """Uncertainty of a given zero offset that says none."""

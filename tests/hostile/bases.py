@@ -12,15 +12,15 @@ import numpy as np
 
 from service.domain.codes import LogFormat
 from service.domain.log import DecodedLog
-from tests.synthetic.families import simulate
+from tests.synthetic.families import simulate_mixed
 from tests.synthetic.ulog_file import Variant, write_ulog
 from tests.unit.readers.example import as_batch, as_table, circling_log
 
 SHARED_LOGS = Path(__file__).parents[3] / "shared" / "logs"
 LARGEST_SHARED_BYTES = 300_000
 """Real logs are cut to this, so that a case stays quick."""
-DECIMALS = 6
-"""Of written numbers: a microsecond, a micropascal."""
+SAMPLES = 400
+"""About as many a stream keeps, for the same reason."""
 
 SETTINGS: Mapping[str, Any] = {
     "aircraft": {
@@ -35,7 +35,7 @@ SETTINGS: Mapping[str, Any] = {
     },
     "configuration_times": [{"start_s": 0, "name": "clean"}, {"start_s": 20, "name": "flaps"}],
     "probe": {"zero_offset_pa": 0.8, "zero_offset_uncertainty_pa": 0.5, "full_scale_pa": 6900},
-    "loiters": [{"start_s": 8, "end_s": 30}],
+    "loiters": [{"start_s": 8, "end_s": 600}],
     "warnings": {"caution_below": 0.3, "warning_below": 0.1, "hold_s": 0.5},
 }
 
@@ -58,24 +58,22 @@ VARIATIONS = (
 
 @cache
 def flights() -> tuple[DecodedLog, ...]:
-    """Two that end in a fit within a fraction of a second, one that is refused early, one simulated in gusts."""
-    return (
-        circling_log(40.0),
-        circling_log(60.0, 5.0),
-        circling_log(12.0),
-        _thinned(simulate("with_ground", 1, 1)[0].log, 4),
-    )
+    """Two simulated in gusts that end in a fit within a fraction of a second, and two short ones."""
+    simulated = simulate_mixed(("with_ground", "slow_sensors"), 1, seed=1)
+    (grounded,), (slow,) = simulated["with_ground"], simulated["slow_sensors"]
+    return (_thinned(grounded.log), _thinned(slow.log), circling_log(40.0), circling_log(12.0))
 
 
-def _thinned(log: DecodedLog, step: int) -> DecodedLog:
-    """Every `step`-th sample of every stream."""
+def _thinned(log: DecodedLog) -> DecodedLog:
+    """The log with fewer samples of each stream."""
     names = ("probe", "static", "temperature", "gps", "attitude", "load_factor", "ground_contact")
-    return replace(log, **{name: _every(getattr(log, name), step) for name in names})
+    return replace(log, **{name: _every(getattr(log, name)) for name in names})
 
 
-def _every(samples: Any, step: int) -> Any:
+def _every(samples: Any) -> Any:
     if samples is None:
         return None
+    step = max(1, samples.time_s.size // SAMPLES)
     values = {name: getattr(samples, name) for name in samples.__slots__}
     return replace(samples, **{name: v[::step].copy() for name, v in values.items() if isinstance(v, np.ndarray)})
 
@@ -96,7 +94,7 @@ def bases(log_format: LogFormat) -> tuple[bytes, ...]:
     if log_format is LogFormat.BATCH:
         return tuple(json.dumps(batch).encode() for batch in batches())
     written = [as_ulog(log, each.variant) for log in flights() for each in VARIATIONS[:2]]
-    written += [as_ulog(flights()[0], each.variant) for each in VARIATIONS[2:]]
+    written += [as_ulog(flights()[2], each.variant) for each in VARIATIONS[2:]]
     return (*written, *_shared())
 
 

@@ -95,7 +95,7 @@ def line_ends(data: bytes, random: Random) -> bytes:
 
 
 def row_order(data: bytes, random: Random) -> bytes:
-    head, *rows = _lines(data)
+    head, *rows = [*_lines(data), ""]
     way = int(random.integers(0, 4))
     if way == 0:
         rows = [rows[index] for index in random.permutation(len(rows)).tolist()]

@@ -1,4 +1,4 @@
-"""A decoded log of circles (or legs) of known truth: the airspeed wanders, probe and GPS tell of one and the same motion."""
+"""A decoded log of circles (or legs) of known truth: the airspeed wanders, and probe and GPS tell of one motion."""
 
 from dataclasses import dataclass, replace
 from typing import Any
@@ -10,8 +10,6 @@ from service.airdata.pitot import impact_pressure_from_true_airspeed
 from service.domain.arrays import FloatArray
 from service.domain.codes import LogFormat
 from service.domain.log import DecodedLog, GpsSamples, ProbeSamples, StaticSamples, TemperatureSamples
-
-REST_WANDER_PA = 0.2
 
 
 @dataclass(frozen=True, slots=True)
@@ -57,7 +55,7 @@ def air_speed_and_heading(flown: Flown, time_s: FloatArray) -> tuple[FloatArray,
     speed = np.where(share < 0.5, flown.airspeed_mps, flown.second_airspeed_mps or flown.airspeed_mps)
     # waves that fit in no turn, like an autopilot that hunts
     wander = np.sin(2.0 * np.pi * flying_s / 13.7) + np.sin(2.0 * np.pi * flying_s / 7.9 + 1.0)
-    moves = (share >= 0.0) & (share <= 1.0)
+    moves = ((share >= 0.0) & (share <= 1.0)) | (flown.rest_s == 0.0)
     if flown.headings_deg:
         leg = np.clip((flying_s / flown.turn_s).astype(np.int64), 0, len(flown.headings_deg) - 1)
         heading = np.radians(np.array(flown.headings_deg)[leg])

@@ -16,6 +16,8 @@ BLOCK_S = 1.0
 FEWEST_TO_TELL_NOISE = 4
 """Samples in a block from which their own differences tell the noise."""
 STATIC_HALF_WINDOW_S = 1.0
+MOST_EMPTY = 10
+"""More than a window may miss."""
 MEDIAN_OF_CHI_SQUARE = 0.4549
 """Of one degree of freedom: turns a median square into a mean square."""
 ROUNDING_VARIANCE = 1.0 / 12.0
@@ -29,8 +31,6 @@ class SecondBlocks:
 
     start: IntArray
     """(k + 1,) index of each block's first sample; a block may be empty."""
-    time_s: FloatArray
-    """Middle of each block."""
     reading_pa: FloatArray
     """NaN where the block holds less than half of its samples."""
     noise_pa2: FloatArray
@@ -44,30 +44,36 @@ class SecondBlocks:
 
 
 def second_blocks(evidence: FlightEvidence) -> SecondBlocks:
-    """Blocks of a second, or of one sample where the probe is slower."""
+    """Blocks of a second, or of one sample where the probe is slower; a gap in time leaves a few empty ones."""
     time_s = evidence.series.time_s
-    length = max(BLOCK_S, evidence.interval_s)
-    edges = np.arange(time_s[0] - 0.5 * evidence.interval_s, time_s[-1] + length, length)
-    start = np.searchsorted(time_s, edges)
-    middle = 0.5 * (edges[1:] + edges[:-1])
-    usual = max(round(length / evidence.interval_s), 1)
+    length_s = max(BLOCK_S, evidence.interval_s)
+    usual = max(round(length_s / evidence.interval_s), 1)
+    number = _numbers(time_s, length_s, single=usual == 1)
+    start = np.searchsorted(number, np.arange(number[-1] + 2))
     known = np.isfinite(evidence.reading_pa)
     count, total = _sums(start, known.astype(np.float64)), _sums(start, np.where(known, evidence.reading_pa, 0.0))
     enough = count >= max(0.5 * usual, 1.0)
-    static_pa, static_noise_pa2 = _static(evidence, middle)
-    grounded = _sums(start, (~evidence.moving).astype(np.float64))
-    expected = _sums(start, np.nan_to_num(evidence.expected_pa))
     size = np.maximum(np.diff(start), 1)
+    middle_s = time_s[np.minimum((start[:-1] + start[1:]) // 2, time_s.size - 1)]
+    static_pa, static_noise_pa2 = _static(evidence, middle_s)
     return SecondBlocks(
         start=start,
-        time_s=middle,
         reading_pa=np.where(enough, total / np.maximum(count, 1.0), np.nan),
-        noise_pa2=_noise(evidence, start) / size if usual >= FEWEST_TO_TELL_NOISE else np.full(middle.size, np.nan),
+        noise_pa2=_noise(evidence, start) / size if usual >= FEWEST_TO_TELL_NOISE else np.full(size.size, np.nan),
         static_pa=static_pa,
         static_noise_pa2=static_noise_pa2,
-        airborne=grounded == 0,
-        expected_pa=expected / size,
+        airborne=_sums(start, (~evidence.moving).astype(np.float64)) == 0,
+        expected_pa=_sums(start, np.nan_to_num(evidence.expected_pa)) / size,
     )
+
+
+def _numbers(time_s: FloatArray, length_s: float, single: bool) -> IntArray:
+    """(n,) block number of each sample; a gap counts as no more than MOST_EMPTY blocks, for a log may span years."""
+    if single:
+        steps = np.maximum(np.round(np.diff(time_s) / length_s), 1.0)
+    else:
+        steps = np.diff(np.floor((time_s - time_s[0]) / length_s))
+    return np.concatenate([[0], np.cumsum(np.minimum(steps, MOST_EMPTY + 1))]).astype(np.int64)
 
 
 def _sums(start: IntArray, values: FloatArray) -> FloatArray:

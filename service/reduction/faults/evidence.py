@@ -14,6 +14,7 @@ from service.reduction.faults.rough_wind import speed_through_air
 MOVING_MPS = 3.0
 MOVING_WITHIN_S = 5.0
 FEWEST_REST_SAMPLES = 5
+LARGEST_PA, LARGEST_K, LARGEST_MPS, LARGEST_M = 1e7, 1e4, 1e4, 1e6
 COMPENSATED_ZERO_UNCERTAINTY_PA = 1.0
 """Spread of the zero of a sensor that was zeroed (the design notes' prior)."""
 REST_ZERO_UNCERTAINTY_PA = 2.0
@@ -60,8 +61,13 @@ def gather_evidence(
     log_gaps: tuple[ReadingGap, ...],
     sensors: tuple[SensorNote, ...],
     full_scale_pa: float | None,
+    given_zero_pa: float | None,
 ) -> FlightEvidence:
     """Everything that the checks share, computed once."""
+    series = _within_reason(series)
+    if static is not None:
+        pressure_pa = np.clip(static.static_pressure_pa, -LARGEST_PA, LARGEST_PA)
+        static = replace(static, static_pressure_pa=pressure_pa)
     airborne = ~series.on_ground
     speed, wind_known = speed_through_air(series)
 
@@ -73,11 +79,24 @@ def gather_evidence(
         moving=airborne & _moves(series),
         expected_pa=impact_pressure_from_true_airspeed(speed, series.static_pressure_pa, series.air_temperature_k),
         wind_known=wind_known,
-        zero=_zero(series),
+        zero=_zero(series, given_zero_pa),
         static=static,
         log_gaps=log_gaps,
         sensors=sensors,
         full_scale_pa=full_scale_pa,
+    )
+
+
+def _within_reason(series: AirDataSeries) -> AirDataSeries:
+    """The series with numbers that no flight can hold cut to some that can be squared; spikes stay spikes."""
+    return replace(
+        series,
+        reading_pa=np.clip(series.reading_pa, -LARGEST_PA, LARGEST_PA),
+        static_pressure_pa=np.clip(series.static_pressure_pa, 1.0, LARGEST_PA),
+        air_temperature_k=np.clip(series.air_temperature_k, 1.0, LARGEST_K),
+        velocity_north_mps=np.clip(series.velocity_north_mps, -LARGEST_MPS, LARGEST_MPS),
+        velocity_east_mps=np.clip(series.velocity_east_mps, -LARGEST_MPS, LARGEST_MPS),
+        gps_altitude_m=np.clip(series.gps_altitude_m, -LARGEST_M, LARGEST_M),
     )
 
 
@@ -92,7 +111,9 @@ def _moves(series: AirDataSeries) -> BoolArray:
     return np.asarray(np.interp(series.time_s, time_s, closed) > MOVING_MPS)
 
 
-def _zero(series: AirDataSeries) -> KnownZero | None:
+def _zero(series: AirDataSeries, given_pa: float | None) -> KnownZero | None:
+    if given_pa is not None:
+        return KnownZero(given_pa, COMPENSATED_ZERO_UNCERTAINTY_PA)
     rest = series.reading_pa[series.at_rest]
     rest = rest[np.isfinite(rest)]
     if rest.size >= FEWEST_REST_SAMPLES:

@@ -42,6 +42,7 @@ def find_faults(
     log_gaps: tuple[ReadingGap, ...] = (),
     sensors: tuple[SensorNote, ...] = (),
     full_scale_pa: float | None = None,
+    given_zero_pa: float | None = None,
     static: StaticSamples | None = None,
 ) -> FaultReport:
     """All faults that show before the fit.
@@ -51,6 +52,7 @@ def find_faults(
     log_gaps : spans for which the recorder says that it lost data.
     sensors : every instance of a sensor that the log holds, as judged by the reader.
     full_scale_pa : the probe's, where known. [Pa]
+    given_zero_pa : the zero offset that the user gave. [Pa]
     static : the static sensor's own samples; without them its freezing cannot be seen.
 
     Returns
@@ -61,7 +63,7 @@ def find_faults(
     static_faulty = np.zeros(series.time_s.size, dtype=bool)
     if series.time_s.size < 2:
         return FaultReport((), probe_faulty, static_faulty)
-    evidence = gather_evidence(series, static, log_gaps, sensors, full_scale_pa)
+    evidence = gather_evidence(series, static, log_gaps, sensors, full_scale_pa, given_zero_pa)
     findings: list[Finding] = []
     for _, check in CHECKS:
         for finding in check(evidence):

@@ -10,12 +10,13 @@ largest such mean that gusts alone make in one of a thousand flights or fewer (s
 """
 
 from dataclasses import dataclass
+from typing import Protocol
 
 import numpy as np
 
 from service.domain.arrays import BoolArray, FloatArray
 from service.domain.codes import FaultKind
-from service.domain.results import AirDataSeries, Fault, FitResult, FittedPoints, Loiter
+from service.domain.results import AirDataSeries, Estimate, Fault, FittedPoints, Loiter
 from service.reduction.faults.reading_edges import Edges, edges_of_reading, extreme_in_bins
 from service.reduction.faults.scale_levels import levels_of_spans
 
@@ -31,6 +32,16 @@ LEAST_STEP = 0.02
 """Of speed: smaller ones are not worth a word."""
 
 
+class Fitted(Protocol):
+    """What is asked of the fit."""
+
+    @property
+    def zero_offset_pa(self) -> float: ...
+
+    @property
+    def gps_delay_s(self) -> Estimate | None: ...
+
+
 @dataclass(frozen=True, slots=True)
 class _Measure:
     """A measure of the step: values and weights (1 / variance), 0 where there is none; broadcast to (k + 1, k + 1)."""
@@ -43,7 +54,7 @@ class _Measure:
 def find_scale_step(
     points: FittedPoints,
     loiters: tuple[Loiter, ...],
-    fit: FitResult,
+    fit: Fitted,
     *,
     series: AirDataSeries | None = None,
     usable: BoolArray | None = None,
@@ -85,7 +96,7 @@ def _flown(series: AirDataSeries | None, loiters: tuple[Loiter, ...]) -> tuple[f
     return float(flown[0]), float(flown[-1])
 
 
-def _edges(series: AirDataSeries | None, usable: BoolArray | None, fit: FitResult) -> Edges:
+def _edges(series: AirDataSeries | None, usable: BoolArray | None, fit: Fitted) -> Edges:
     if series is None:
         return Edges(np.empty(0), np.empty(0), np.empty(0))
     chosen = np.isfinite(series.reading_pa) & ~series.on_ground

@@ -39,6 +39,8 @@ FEWEST_WINDOWS = 30
 WHOLE_FLIGHT_SHARE = 0.002
 """Of the dynamic pressure by GPS: a whole flight that varies less than this senses no air."""
 MOST_MISSING = 0.2
+CHUNK = 20000
+"""Windows looked at together, to bound the memory."""
 LEAST_CONTRAST, MOST_CONTRAST = 2.0, 100.0
 MOST_MISFIT = 12.0
 """Of one block, half its square: a lone outlier does not end a span."""
@@ -80,7 +82,7 @@ class _Still:
 
     def misfit(self, blocks: SecondBlocks) -> FloatArray:
         """(k,) of every block, in standard deviations; NaN where a block is missing."""
-        static = np.zeros(blocks.time_s.size) if self.slope == 0.0 else blocks.static_pa
+        static = np.zeros(blocks.reading_pa.size) if self.slope == 0.0 else blocks.static_pa
         return (blocks.reading_pa - self.level_pa - self.slope * static) / self.deviation_pa
 
 
@@ -117,11 +119,11 @@ def _kind(evidence: FlightEvidence, blocks: SecondBlocks, still: _Still) -> Faul
     if follows and still.deviation_pa**2 < UNEXPLAINED_SHARE * scatter:
         return FaultKind.TRAPPED
     level, expected = float(np.nanmedian(blocks.reading_pa[inside])), float(np.median(blocks.expected_pa[inside]))
-    usual = _usual_level(blocks, inside)
-    if evidence.zero is not None and np.isfinite(usual):
+    if evidence.zero is not None:
+        # a reading far above a known zero senses air, however steady the airspeed is held
         blocked = abs(level - evidence.zero.value_pa) < NOTHING_SHARE * expected
     else:
-        blocked = not usual - level < SINK_SHARE * expected
+        blocked = not _usual_level(blocks, inside) - level < SINK_SHARE * expected
     return FaultKind.BLOCKED if blocked else None
 
 
@@ -136,9 +138,9 @@ def _usual_level(blocks: SecondBlocks, but: slice) -> float:
 def _quiet(blocks: SecondBlocks) -> BoolArray:
     """(k,) blocks that lie in a quiet window."""
     slow = bool(np.isnan(blocks.noise_pa2).all())
-    quiet = np.zeros(blocks.time_s.size, dtype=bool)
+    quiet = np.zeros(blocks.reading_pa.size, dtype=bool)
     for length, share in WINDOWS_SLOW if slow else WINDOWS:
-        if blocks.time_s.size < length:
+        if blocks.reading_pa.size < length:
             continue
         windows = _scan(blocks, length)
         still = _still_windows(windows, share, slow) | _still_flight(blocks, windows)
@@ -156,33 +158,31 @@ def _scan(blocks: SecondBlocks, length: int) -> _Windows:
         return _Windows(length, valid, nothing, nothing, nothing, nothing)
     index = np.arange(good.size)
     reading = np.interp(index, index[good], blocks.reading_pa[good])
-    static = (
-        np.nan_to_num(blocks.static_pa - np.nanmean(blocks.static_pa))
-        if np.isfinite(blocks.static_pa).any()
-        else 0.0 * reading
-    )
-    y = _centred(sliding_window_view(reading, length))
-    p = _centred(sliding_window_view(static, length))
+    known = np.isfinite(blocks.static_pa)
+    static = np.where(known, blocks.static_pa - np.mean(blocks.static_pa[known]), 0.0) if known.any() else 0.0 * reading
+    noise = np.nan_to_num(blocks.noise_pa2)
+    chunks = [slice(first, first + CHUNK + length - 1) for first in range(0, valid.size, CHUNK)]
+    parts = [_regressions(reading[chunk], static[chunk], noise[chunk], length) for chunk in chunks]
+    slope, variance, noise, white, covariance = (np.concatenate(columns) for columns in zip(*parts, strict=True))
+    by_static = slope**2 * blocks.static_noise_pa2
+    # The static pressure is a mean of two blocks: half of its noise is its neighbour's too.
+    return _Windows(length, valid, variance, noise + by_static, white, covariance - 0.5 * by_static)
+
+
+def _regressions(reading: FloatArray, static: FloatArray, noise: FloatArray, length: int) -> tuple[FloatArray, ...]:
+    """Of every window: slope, variance about it, noise, whiteness, covariance of neighbours."""
+    y, p = _centred(sliding_window_view(reading, length)), _centred(sliding_window_view(static, length))
     power = np.einsum("ij,ij->i", p, p)
     slope = np.minimum(np.einsum("ij,ij->i", y, p) / np.maximum(power, 1e-9), 0.0)
     rest = y - slope[:, None] * p
     square = np.einsum("ij,ij->i", rest, rest)
     variance = square / (length - 2)
-    steps = np.diff(rest, axis=1)
     # The median, for one block with a step in it would pass for noise.
-    noise = np.median(sliding_window_view(np.nan_to_num(blocks.noise_pa2), length), axis=1)
-    return _Windows(
-        length=length,
-        valid=valid,
-        variance_pa2=variance,
-        noise_pa2=noise + slope**2 * blocks.static_noise_pa2,
-        white=0.5 * np.mean(steps**2, axis=1) / np.maximum(square / length, 1e-12),
-        # Taking out mean and slope leaves white noise a covariance of -2 / length of its variance.
-        # The static pressure is a mean of two blocks: half of its noise is its neighbour's too.
-        excess_pa2=np.mean(rest[:, 1:] * rest[:, :-1], axis=1)
-        + 2.0 * variance / length
-        - 0.5 * slope**2 * blocks.static_noise_pa2,
-    )
+    usual_noise = np.median(sliding_window_view(noise, length), axis=1)
+    white = 0.5 * np.mean(np.diff(rest, axis=1) ** 2, axis=1) / np.maximum(square / length, 1e-12)
+    # Taking out mean and slope leaves white noise a covariance of -2 / length of its variance.
+    covariance = np.mean(rest[:, 1:] * rest[:, :-1], axis=1) + 2.0 * variance / length
+    return slope, variance, usual_noise, white, covariance
 
 
 def _centred(windows: FloatArray) -> FloatArray:

@@ -10,7 +10,7 @@ from service.domain.arrays import FloatArray, IntArray
 SIDES = (1, 2, 3, 5)
 """Samples averaged on either side of an edge; the number that scatters least is taken."""
 FEWEST_PER_SIDE = 50
-SCATTER_WINDOW_S = 30.0
+SCATTER_WINDOW_S, LONGEST_SCATTER_WINDOW = 30.0, 601
 DEVIATION_TO_SIGMA = 1.4826
 LARGEST_STRETCH = 1.5
 """An edge across a gap in time is none."""
@@ -47,7 +47,7 @@ def _edges(time_s: FloatArray, log_speed: FloatArray, side: int) -> Edges:
     stretch = time_s[2 * side - 1 :] - time_s[: time_s.size - 2 * side + 1]
     whole = stretch <= LARGEST_STRETCH * max(2 * side - 1, 1) * interval_s
     usual = DEVIATION_TO_SIGMA * float(np.median(np.abs(step)))
-    width = max(round(SCATTER_WINDOW_S / interval_s), 3) | 1
+    width = min(max(round(SCATTER_WINDOW_S / interval_s), 3) | 1, LONGEST_SCATTER_WINDOW)
     local = DEVIATION_TO_SIGMA * median_filter(np.abs(step), min(width, step.size), mode="nearest")
     return Edges(middle[whole], step[whole], np.maximum(local, usual)[whole])
 

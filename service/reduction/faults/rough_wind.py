@@ -41,8 +41,8 @@ def _winds(time_s: FloatArray, north: FloatArray, east: FloatArray) -> tuple[Flo
     """Middles (k,) of the windows that tell a wind [s], and the winds (2, k) [m/s]."""
     if time_s.size < FEWEST_SAMPLES:
         return np.empty(0), np.empty((2, 0))
-    span = time_s[-1] - time_s[0]
-    starts = time_s[0] + np.arange(0.0, max(span - WINDOW_S, 0.0) + STEP_S, STEP_S)
+    # Only where there are samples: a hostile log may span years.
+    starts = time_s[0] + STEP_S * np.unique(np.floor((time_s - time_s[0]) / STEP_S))
     middles, centres = _winds_of_windows(time_s, north, east, starts, starts + WINDOW_S)
     if middles.size:
         return middles, centres

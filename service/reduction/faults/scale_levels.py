@@ -81,7 +81,7 @@ def _generalised(gusts: FloatArray, residual: FloatArray, nuisance: FloatArray) 
 
 
 def _nuisance(points: FittedPoints, directions: FloatArray) -> FloatArray:
-    """(k, p) orthonormal: what a wrong scale or zero, and a wrong or drifting wind in each loiter, add to the residuals."""
+    """(k, p) orthonormal: what a wrong scale or zero, and a wrong, drifting wind in each loiter, add."""
     # A wrong zero offset changes the speed by its pressure over the speed.
     columns = [points.wind_corrected_speed_mps, 1.0 / np.maximum(points.wind_corrected_speed_mps, SLOWEST_MPS)]
     for loiter in np.unique(points.loiter):

@@ -15,6 +15,8 @@ JOIN_S = 5.0
 SHORTEST_S = 4.0
 WHOLE_SHARE = 0.8
 """From this share of the flight on, a negative reading may be a negative raw zero: how it moves must then decide."""
+AGAINST = -0.05
+"""Correlation of reading and airspeed by GPS: sound flights keep above it, even at one airspeed in gusts."""
 PART_SHARE = 0.2
 """From this share on, a reading that moves against the airspeed is swapped throughout: no tube is changed in flight."""
 
@@ -54,12 +56,17 @@ def _below_zero(evidence: FlightEvidence) -> BoolArray:
 def _judged_by_motion(low: BoolArray, reading: FloatArray, expected: FloatArray) -> BoolArray:
     """What is swapped where no zero is known: all if the reading falls as the airspeed by GPS rises, else a part."""
     known = np.isfinite(expected)
-    moves = (
-        (reading[known] - reading[known].mean()) * (expected[known] - expected[known].mean()) if known.any() else [0.0]
-    )
-    if np.mean(moves) < 0.0 and low.mean() > PART_SHARE:
+    against = known.any() and _correlation(reading[known], expected[known]) < AGAINST
+    if against and low.mean() > PART_SHARE:
         return np.ones(low.size, dtype=bool)
     return low if low.mean() < WHOLE_SHARE else np.zeros(low.size, dtype=bool)
+
+
+def _correlation(first: FloatArray, second: FloatArray) -> float:
+    """0 where either does not vary."""
+    first, second = first - first.mean(), second - second.mean()
+    scale = float(np.sqrt(np.sum(first**2) * np.sum(second**2)))
+    return float(np.sum(first * second)) / scale if scale > 0.0 else 0.0
 
 
 def _smoothed(values: FloatArray, interval_s: float) -> FloatArray:

@@ -1,16 +1,15 @@
 """A leak after the fit: a step of the scale is found where it is, and gusts alone are not taken for one."""
 
-from dataclasses import replace
+from dataclasses import dataclass, replace
 
 import numpy as np
 import pytest
 
 from service.domain.codes import Direction, FaultKind
-from service.domain.results import AirDataSeries, Fault, FittedPoints, Loiter
+from service.domain.results import AirDataSeries, Estimate, Fault, FittedPoints, Loiter
 from service.reduction.faults import find_scale_step
 from service.reduction.faults.scale_levels import levels_of_spans
 from tests.unit.reduction.circling import AIRSPEED_MPS, TURN_S, circling
-from tests.unit.reduction.constructed import fit_of
 
 DURATION_S = 384.0
 BLOCK_S = TURN_S / 20.0
@@ -18,6 +17,16 @@ LOITERS = tuple(
     Loiter(start_s, start_s + DURATION_S / 2, 6.0, Direction.RIGHT, 360.0, AIRSPEED_MPS, True)
     for start_s in (0.0, DURATION_S / 2)
 )
+
+
+@dataclass(frozen=True)
+class Fit:
+    """What the search asks of a fit."""
+
+    zero_offset_pa: float = 0.0
+    gps_delay_s: Estimate | None = None
+
+
 LEAK = 0.9
 """Of the pressure: 5 % of the speed."""
 
@@ -35,7 +44,7 @@ def flight(
     speed = np.bincount(block, np.sqrt(2.0 * np.maximum(reading, 0.0) / 1.225), count) / np.bincount(
         block, minlength=count
     )
-    middle = (np.arange(count) + 0.5) * BLOCK_S
+    middle = np.arange(count, dtype=np.float64) * BLOCK_S + 0.5 * BLOCK_S
     points = FittedPoints(
         time_s=middle,
         loiter=np.floor(middle / (DURATION_S / 2)),
@@ -48,7 +57,7 @@ def flight(
 
 def told(series: AirDataSeries | None, points: FittedPoints) -> Fault | None:
     usable = None if series is None else np.ones(series.time_s.size, dtype=bool)
-    return find_scale_step(points, LOITERS, fit_of(), series=series, usable=usable)
+    return find_scale_step(points, LOITERS, Fit(), series=series, usable=usable)
 
 
 @pytest.mark.parametrize("gust_mps", [0.15, 0.4, 0.9])
@@ -101,6 +110,15 @@ def test_a_change_of_airspeed_is_no_leak() -> None:
         wind_corrected_speed_mps=slower * points.wind_corrected_speed_mps,
     )
     assert told(replace(series, reading_pa=reading), changed) is None
+
+
+def test_a_late_gps_moves_the_level_to_the_probe_s_clock() -> None:
+    series, points = flight(3, (230.0, DURATION_S))
+    late = replace(points, time_s=points.time_s + 0.4)
+    fit = Fit(gps_delay_s=Estimate(0.4, 0.05, (0.3, 0.5)))
+    fault = find_scale_step(late, LOITERS, fit, series=series)
+    assert fault is not None
+    assert fault.start_s == pytest.approx(230.0, abs=0.5)
 
 
 def test_too_few_points_tell_nothing() -> None:

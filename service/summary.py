@@ -84,7 +84,7 @@ def _stall(reduction: Reduction) -> Iterator[str]:
     elif not reduction.stall_warnings:
         yield _line("stall warnings", "none (no proof of safety)")
     for warning in reduction.stall_warnings:
-        yield f"{warning.level.value.upper()}: {warning.message} ({warning.start_s:.1f} to {warning.end_s:.1f} s)"
+        yield f"{warning.message} ({warning.start_s:.1f} to {warning.end_s:.1f} s)"
 
 
 def _faults(reduction: Reduction) -> Iterator[str]:

@@ -21,6 +21,8 @@ class ProbeSamples:
     source: str
     compensated: bool = True
     """False when the source is known to carry the sensor's raw, uncompensated zero."""
+    reordered: BoolArray | None = None
+    """(n,) samples that stood behind later ones in the source and were sorted; None: none."""
 
 
 @dataclass(frozen=True, slots=True)

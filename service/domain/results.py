@@ -34,6 +34,8 @@ class AirDataSeries:
     time_s: FloatArray
     reading_pa: FloatArray
     """Total minus static as read. NaN where missing."""
+    reordered: BoolArray
+    """(n,) samples that stood behind later ones in the source."""
     static_pressure_pa: FloatArray
     air_temperature_k: FloatArray
     """The virtual temperature where humidity is known."""

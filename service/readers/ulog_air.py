@@ -43,7 +43,7 @@ def probe_samples(choice: Choice, zero_s: float) -> ProbeSamples | None:
     if choice.chosen is None:
         return None
     reading = cleaned("impact_pressure_pa", choice.chosen.values("impact_pressure_pa"))
-    return ProbeSamples(since(zero_s, choice.chosen.time_s), reading, choice.source, compensated=False)
+    return ProbeSamples(since(zero_s, choice.chosen.time_s), reading, choice.source, False, choice.chosen.reordered())
 
 
 def choose_static(found: Sequence[Recording]) -> Choice:

@@ -10,7 +10,7 @@ from typing import Any
 import numpy as np
 import numpy.typing as npt
 
-from service.domain.arrays import FloatArray
+from service.domain.arrays import BoolArray, FloatArray
 from service.domain.errors import InputTooLarge
 from service.readers.limits import MAXIMUM_SPAN_S
 from service.readers.ulog_fields import ALL_TOPICS, SAMPLE_TIME, TIME, LogField, Topic
@@ -49,6 +49,13 @@ class Recording:
         """
         array, field = self.raw[quantity]
         return in_si(array[part] if self.order is None else array[self.order[part]], field)
+
+    def reordered(self) -> BoolArray | None:
+        """(n,) samples that stood behind later ones in the file; None where none did."""
+        if self.steps_back == 0 or self.order is None or self.order.size == 0:
+            return None
+        least_after = np.minimum.accumulate(self.order[::-1])[::-1]
+        return np.asarray(np.append(self.order[:-1] > least_after[1:], False))
 
     def renamed(self, quantity: str, name: str) -> "Recording":
         """The same recording with one of its quantities alone, under another name."""

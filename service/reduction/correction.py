@@ -188,6 +188,7 @@ def _flags(
         Flag.ON_GROUND: series.on_ground,
         Flag.STANDARD_STATIC: series.standard_static,
         Flag.STANDARD_TEMPERATURE: series.standard_temperature,
+        Flag.TIME_REORDERED: series.reordered,
     }
     if fit is not None:
         raised[Flag.EXTRAPOLATED] = _log_distance(calibrated_mps, fit.airspeed_range_mps) > 0.0

@@ -57,6 +57,7 @@ def build_series(log: DecodedLog, probe: ProbeSamples, ground_s: FloatArray, res
     return AirDataSeries(
         time_s=time_s,
         reading_pa=probe.impact_pressure_pa,
+        reordered=np.zeros(time_s.size, dtype=bool) if probe.reordered is None else probe.reordered,
         static_pressure_pa=static_pa,
         air_temperature_k=temperature_k,
         temperature_uncertainty_k=temperature_uncertainty_k,

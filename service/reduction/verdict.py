@@ -28,6 +28,10 @@ LARGEST_RESIDUAL_SHARE = 0.25
 DISAGREEING_LOITERS = 0.003
 """Chance of the loiters' scatter below which they contradict one another."""
 FEW_TURNS = 3.0
+STALE_AIR_MPS = 1.5
+"""Mean wind below which circles over one spot meet the same gusts again."""
+WEIGHTY = frozenset({Reason.INTERVAL_WIDE, Reason.SCALE_CHANGED, Reason.LOITERS_DISAGREE})
+"""Reasons that make a calibration doubtful; the others are remarks."""
 
 
 def refused(reasons: Sequence[ReasonGiven], source: ZeroOffsetSource = ZeroOffsetSource.PRIOR) -> Calibration:
@@ -94,11 +98,10 @@ def calibration_of(
     settings: ProbeSettings,
     remarks: Sequence[ReasonGiven],
 ) -> Calibration:
-    """Accepted or doubtful: `remarks` that weigh on the verdict are those of `_WEIGHING`."""
+    """Accepted or doubtful; `remarks` are given beside the fit's own doubts."""
     speed_scale = _power(fit, 0.5)
     reasons = [*_doubts(fit, series, loiters, zero, speed_scale), *remarks]
-    weighing = {Reason.INTERVAL_WIDE, Reason.SCALE_CHANGED, Reason.LOITERS_DISAGREE}
-    doubtful = any(reason.code in weighing for reason in reasons)
+    doubtful = any(reason.code in WEIGHTY for reason in reasons)
     zero_deviation = float(np.sqrt(fit.covariance[1, 1]))
     reach = fit.coverage_factor_95 * zero_deviation
     return Calibration(
@@ -123,7 +126,8 @@ def _power(fit: FitResult, exponent: float, factor: float = 1.0) -> Estimate:
     """factor * K^exponent; its interval is that of ln K, so it never reaches zero."""
     log_deviation = exponent * float(np.sqrt(fit.covariance[0, 0]))
     value = factor * float(fit.pressure_scale**exponent)
-    reach = fit.coverage_factor_95 * log_deviation
+    # a reach beyond 100 is refused anyhow, and must not overflow before that
+    reach = min(fit.coverage_factor_95 * log_deviation, 100.0)
     return Estimate(value, value * log_deviation, (value * float(np.exp(-reach)), value * float(np.exp(reach))))
 
 
@@ -142,6 +146,14 @@ def _doubts(
                 Reason.INTERVAL_WIDE,
                 f"The 95 % interval of the speed scale is ±{half_width:.3f}, wider than ±{ACCEPTED_HALF_WIDTH}: "
                 f"{_remedy(fit)}.",
+            )
+        )
+    if half_width >= ACCEPTED_HALF_WIDTH and fit.wind.speed_mps.value < STALE_AIR_MPS:
+        doubts.append(
+            ReasonGiven(
+                Reason.STALE_AIR,
+                f"The wind of {fit.wind.speed_mps.value:.1f} m/s hardly carries fresh air through the loiters, so circles "
+                "over one spot meet the same gusts again: fly at another place or height.",
             )
         )
     if fit.loiters_agree < DISAGREEING_LOITERS:

@@ -37,7 +37,7 @@ def test_everything_is_told() -> None:
         "15.0 to 19.8 m/s",
         "5.00 ± 0.10 m/s",
         "5.7 turns left",
-        "WARNING: Too slow.",
+        "Too slow.",
         "FAULT spikes (probe, 1.0 to 2.0 s): Three spikes.",
         *CAUTIONS.values(),
     ):

@@ -57,13 +57,15 @@ from service.reduction.fit.start import (
 )
 
 FEWEST_BLOCKS = 8
+LARGEST_LOG_SCALE = 20.0
+"""Keeps senseless data within what a float can raise e to; any such scale is refused."""
 RESIDUAL_FLOOR_MPS = 0.004
 CROSS_GUST_EFFECT, CROSS_GUST_DOUBT = 0.27, 0.54
 """Mean residual left by gusts across the path, in units of intensity^2 / V, and its standard uncertainty (trap 4).
 
 It is ((1 - 2 c_v) + r (1 - 2 c_w)) / 2 for the shares c of the sideways and vertical gusts that the aircraft follows
 and the ratio r = 0.8 of vertical to horizontal gust variance. Guidance that holds a circle and a height follows little
-of the slow gusts that carry most of the variance, a free aircraft nearly all: c = 0.35 with standard uncertainty 0.3."""
+of the slow gusts that carry most of the variance, a free aircraft nearly all: c = 0.35 +- 0.3."""
 OFFSET_STEPS = 41
 """Offsets into which each node is split, over four standard deviations to either side."""
 UNLIKELY_SCATTER = 0.1
@@ -191,7 +193,7 @@ def _result(
     probe, blocks = preliminary.probe, preliminary.blocks
     columns, expected, covariance = Columns(len(loiters)), posterior.expected(), posterior.spread()
     fitted = State(
-        state.log_scale + scale.value,
+        float(np.clip(state.log_scale + scale.value, -LARGEST_LOG_SCALE, LARGEST_LOG_SCALE)),
         state.zero_offset_pa + float(expected[1]),
         state.delay_s + float(expected[2]),
         state.wind_mps + expected[columns.winds].reshape(-1, 2),

@@ -74,6 +74,7 @@ def circling(
     along = np.where(moving, AIRSPEED_MPS if speed_mps is None else speed_mps, 0.0)
     series = AirDataSeries(
         time_s=time_s,
+        reordered=np.zeros(time_s.size, dtype=bool),
         reading_pa=dynamic_pa / pressure_scale + zero_pa + rng.normal(0.0, noise_pa, time_s.size),
         static_pressure_pa=static_pa,
         air_temperature_k=np.full(time_s.size, 288.15),

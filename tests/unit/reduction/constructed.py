@@ -26,6 +26,7 @@ def series_of(reading_pa: Any, step_s: float = 0.1, **changes: Any) -> AirDataSe
     whole = AirDataSeries(
         time_s=time_s,
         reading_pa=reading,
+        reordered=np.zeros(n, dtype=bool),
         static_pressure_pa=np.full(n, 101325.0),
         air_temperature_k=np.full(n, 288.15),
         temperature_uncertainty_k=0.0,

@@ -5,8 +5,8 @@
 
 Prints, by family: root mean square error and bias of the speed scale, the mean standard uncertainty, how often the 68
 and 95 % intervals hold the truth, the same for the wind averaged over the used loiters and for the true airspeed,
-verdicts, false alarms; beside it root mean square error and 95 % coverage of one fit per circle (Student) and of textbook least
-squares.
+verdicts, false alarms; beside it root mean square error and 95 % coverage of one fit per circle (Student) and of
+textbook least squares.
 """
 
 import argparse

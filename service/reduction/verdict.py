@@ -152,8 +152,8 @@ def _doubts(
         doubts.append(
             ReasonGiven(
                 Reason.STALE_AIR,
-                f"The wind of {fit.wind.speed_mps.value:.1f} m/s hardly carries fresh air through the loiters, so circles "
-                "over one spot meet the same gusts again: fly at another place or height.",
+                f"The wind of {fit.wind.speed_mps.value:.1f} m/s hardly carries fresh air through the loiters, so "
+                "circles over one spot meet the same gusts again: fly at another place or height.",
             )
         )
     if fit.loiters_agree < DISAGREEING_LOITERS:

@@ -91,7 +91,7 @@ def assert_sound_stream(name: str, samples: object) -> None:
     assert (np.diff(time_s) > 0.0).all()
     for column, values in arrays.items():
         assert values.shape == time_s.shape, (name, column)
-        assert values.dtype == (np.bool_ if column == "on_ground" else np.float64)
+        assert values.dtype == (np.bool_ if column in {"on_ground", "reordered"} else np.float64)
         assert values.flags.c_contiguous
         if column in POSSIBLE:
             known = values[np.isfinite(values)]

@@ -12,6 +12,9 @@ SIDES = (1, 2, 3, 5)
 FEWEST_PER_SIDE = 50
 SCATTER_WINDOW_S, LONGEST_SCATTER_WINDOW = 30.0, 601
 DEVIATION_TO_SIGMA = 1.4826
+TAIL_SIGMAS = 2.576
+"""That 1 % of a normal variable passes."""
+LEAST_DEVIATION = 1e-4
 LARGEST_STRETCH = 1.5
 """An edge across a gap in time is none."""
 LEAST_SPEED_SHARE = 0.05
@@ -31,10 +34,10 @@ class Edges:
 
 def edges_of_reading(time_s: FloatArray, pressure_pa: FloatArray) -> Edges:
     """Edges of (n,) readings above zero, all usable, in flight; none where there are too few."""
+    if time_s.size < FEWEST_PER_SIDE:
+        return Edges(np.empty(0), np.empty(0), np.empty(0))
     log_speed = 0.5 * np.log(np.maximum(pressure_pa, LEAST_SPEED_SHARE**2 * np.median(np.abs(pressure_pa)) + 1e-9))
     candidates = [_edges(time_s, log_speed, side) for side in SIDES if time_s.size >= FEWEST_PER_SIDE * side]
-    if not candidates:
-        return Edges(np.empty(0), np.empty(0), np.empty(0))
     return min(candidates, key=lambda edges: float(np.median(np.abs(edges.step))) if edges.step.size else np.inf)
 
 
@@ -46,10 +49,13 @@ def _edges(time_s: FloatArray, log_speed: FloatArray, side: int) -> Edges:
     interval_s = float(np.median(np.diff(time_s)))
     stretch = time_s[2 * side - 1 :] - time_s[: time_s.size - 2 * side + 1]
     whole = stretch <= LARGEST_STRETCH * max(2 * side - 1, 1) * interval_s
-    usual = DEVIATION_TO_SIGMA * float(np.median(np.abs(step)))
+    # A coarsely rounded reading mostly does not step at all: there the tail tells its scatter.
+    usual = max(
+        DEVIATION_TO_SIGMA * float(np.median(np.abs(step))), float(np.quantile(np.abs(step), 0.99)) / TAIL_SIGMAS
+    )
     width = min(max(round(SCATTER_WINDOW_S / interval_s), 3) | 1, LONGEST_SCATTER_WINDOW)
     local = DEVIATION_TO_SIGMA * median_filter(np.abs(step), min(width, step.size), mode="nearest")
-    return Edges(middle[whole], step[whole], np.maximum(local, usual)[whole])
+    return Edges(middle[whole], step[whole], np.maximum(local, max(usual, LEAST_DEVIATION))[whole])
 
 
 def extreme_in_bins(edges: Edges, bins: IntArray, count: int, sign: float) -> IntArray:

@@ -182,6 +182,7 @@ class _FieldNodes:
         self, model: LinearModel, gust: GustGeometry, residual_rms_mps: float, length_m: float, life: float
     ) -> None:
         self._length_m, self._prior_mean = length_m, model.prior_mean
+        self._prior_precision = model.prior_precision
         self._fading = _fading(model.time_s, life * length_m / (TYPICAL_INTENSITY_FACTOR * residual_rms_mps))
         self._root_noise = np.sqrt(model.noise)
         covariance = gust.covariance(length_m) * self._fading / np.outer(self._root_noise, self._root_noise)
@@ -194,18 +195,25 @@ class _FieldNodes:
         gust_variance = self.intensity_mps[:, None] ** 2 * np.maximum(eigenvalues, 0.0)
         self._precision = 1.0 / (gust_variance + self.noise_mps[:, None] ** 2)
         log_prior = -0.5 * (np.log(length_m / MEDIAN_LENGTH_M) / LENGTH_SPREAD) ** 2
-        self.evidence = log_prior + self._log_likelihood(model.prior_precision)
+        self.evidence = log_prior + self._log_likelihood()
         """(nodes,) log of prior times restricted likelihood."""
 
-    def _log_likelihood(self, prior_precision: FloatArray) -> FloatArray:
-        size = self._x.shape[1]
-        products = (self._x[:, :, None] * self._x[:, None, :]).reshape(-1, size * size)
-        self._information = (self._precision @ products).reshape(-1, size, size) + prior_precision
+    def _log_likelihood(self) -> FloatArray:
+        """(nodes,). No node keeps its information: a flight of many loiters would fill hundreds of megabytes."""
         moment = self._precision @ (self._x * self._y[:, None])
-        self._shift = np.linalg.solve(self._information, moment[:, :, None])[:, :, 0]
+        self._shift = np.empty_like(moment)
+        log_determinant = np.empty(len(moment))
+        for node, pull in enumerate(moment):
+            factor = linalg.cho_factor(self._information(node), overwrite_a=True, check_finite=False)
+            self._shift[node] = linalg.cho_solve(factor, pull, check_finite=False)
+            log_determinant[node] = 2.0 * np.log(np.diag(factor[0])).sum()
         square = self._precision @ self._y**2 - np.einsum("gp,gp->g", moment, self._shift)
-        _, log_determinant = np.linalg.slogdet(self._information)
         return np.asarray(0.5 * (np.log(self._precision).sum(axis=1) - log_determinant - square))
+
+    def _information(self, node: int) -> FloatArray:
+        """(p, p) precision of d at one node."""
+        scaled = self._x * np.sqrt(self._precision[node])[:, None]
+        return np.asarray(scaled.T @ scaled + self._prior_precision)
 
     def solve(
         self, nodes: IntArray, weight: FloatArray, path: PathGeometry, targets: Sequence[Target]
@@ -213,7 +221,7 @@ class _FieldNodes:
         """Posterior at the given nodes, which carry `weight`."""
         precision, shift = self._precision[nodes], self._shift[nodes]
         intensity = self.intensity_mps[nodes]
-        covariance = np.linalg.inv(self._information[nodes])
+        covariance = np.linalg.inv(np.stack([self._information(node) for node in nodes.tolist()]))
         cross, own = self._target_covariances(path, targets)
         coefficients = np.array([target.coefficients for target in targets])
         mean = shift + self._prior_mean

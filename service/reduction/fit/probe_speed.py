@@ -9,7 +9,7 @@ from service.domain.arrays import BoolArray, FloatArray, IntArray
 from service.domain.results import AirDataSeries
 
 MARGIN_S = 3.0
-"""Probe samples kept beyond the fitted span, for delay and averaging."""
+"""Probe samples kept about each GPS sample of the fit, for delay and averaging."""
 LONGEST_BRIDGE_S = 1.6
 """Longest gap between usable probe samples over which the airspeed is interpolated (1 Hz recordings exist)."""
 LEAST_PRESSURE_PA = 1e-3
@@ -62,7 +62,7 @@ class ProbeSpeed:
     """
 
     def __init__(self, series: AirDataSeries, usable: BoolArray, gps_time_s: FloatArray) -> None:
-        near = usable & (series.time_s > gps_time_s[0] - MARGIN_S) & (series.time_s < gps_time_s[-1] + MARGIN_S)
+        near = usable & _near(series.time_s, gps_time_s)
         self._time_s = series.time_s[near]
         self._reading_pa = series.reading_pa[near]
         self._static_pa = series.static_pressure_pa[near]
@@ -119,3 +119,15 @@ class ProbeSpeed:
         if self._last is None or self._last[0] is not gps_time_s or self._last[1] != delay_s:
             self._last = (gps_time_s, delay_s, _Averaging(self._time_s, gps_time_s - delay_s, self._half_s))
         return self._last[2]
+
+
+def _near(time_s: FloatArray, others_s: FloatArray) -> BoolArray:
+    """(n,) whether each time lies within the margin of one of the others.
+
+    A long flight is thinned to a few of its turns: what was read between them would be worked out in vain.
+    """
+    ordered = np.sort(others_s)
+    after = np.searchsorted(ordered, time_s)
+    to_next = ordered[np.minimum(after, ordered.size - 1)] - time_s
+    to_last = time_s - ordered[np.maximum(after - 1, 0)]
+    return np.asarray(np.minimum(np.abs(to_next), np.abs(to_last)) < MARGIN_S)

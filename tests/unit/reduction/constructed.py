@@ -75,6 +75,7 @@ def fit_of(
         heading_coverage_deg=360.0,
         airspeed_range_mps=airspeed_range_mps,
         gust_mps=0.0,
+        loiters_agree=1.0,
         residual_rms_mps=0.0,
         points=FittedPoints(empty, empty, empty, empty, empty),
     )

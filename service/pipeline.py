@@ -43,6 +43,9 @@ from service.reduction.zero import WindAloft, rest_readings, zero_offset
 
 Progress = Callable[[float], None]
 
+MOST_LOITERS = 24
+"""Loiters that one fit takes; more, of very long flights or of a client's windows, are thinned evenly."""
+
 
 @dataclass(frozen=True, slots=True)
 class _Outcome:
@@ -111,18 +114,20 @@ def _calibrate(log: DecodedLog, series: AirDataSeries, settings: Settings, fault
     usable = np.isfinite(series.reading_pa) & ~(faults.probe_faulty | faults.static_faulty)
     rests = rest_readings(series, usable, log.attitude)
     zero = zero_offset(series, settings.probe, rests, None)
-    loiters = find_loiters(series, settings.loiters)
+    found = find_loiters(series, settings.loiters)
+    picked = _picked(len(found))
+    loiters = tuple(found[index] for index in picked)
     reason = _holds_nothing(log, series, usable, faults, loiters)
     if reason is not None:
-        return _Outcome(refused([reason], zero.source), loiters, None, faults, zero)
+        return _Outcome(refused([reason], zero.source), found, None, faults, zero)
     first = _first_fit(series, usable, loiters, zero)
     if isinstance(first, ReasonGiven):
-        return _Outcome(refused([first], zero.source), loiters, None, faults, zero)
+        return _Outcome(refused([first], zero.source), found, None, faults, zero)
     wind = _wind_aloft(series, first)
     zero = zero_offset(series, settings.probe, rests, wind)
     fit = _full_fit(log, series, usable, loiters, zero)
     if isinstance(fit, ReasonGiven):
-        return _Outcome(refused([fit], zero.source), loiters, None, faults, zero)
+        return _Outcome(refused([fit], zero.source), found, None, faults, zero)
     step = find_scale_step(fit.points, loiters, fit)
     remarks = _remarks(log, faults)
     if step is not None:
@@ -130,13 +135,31 @@ def _calibrate(log: DecodedLog, series: AirDataSeries, settings: Settings, fault
         remarks = [ReasonGiven(Reason.SCALE_CHANGED, step.message), *remarks]
         fit = _full_fit(log, series, usable & ~faults.probe_faulty, loiters, zero)
         if isinstance(fit, ReasonGiven):
-            return _Outcome(refused([fit, *remarks], zero.source), loiters, None, faults, zero)
+            return _Outcome(refused([fit, *remarks], zero.source), found, None, faults, zero)
     refusal = refusal_of(fit)
     if refusal is not None:
-        return _Outcome(refused([refusal, *remarks], zero.source), loiters, None, faults, zero)
+        return _Outcome(refused([refusal, *remarks], zero.source), found, None, faults, zero)
     loiters = _with_fitted_speed(loiters, fit)
     calibration = calibration_of(fit, series, loiters, zero, settings.probe, remarks)
-    return _Outcome(calibration, loiters, fit, faults, zero)
+    return _Outcome(calibration, _put_back(loiters, picked, found), _renumbered(fit, picked), faults, zero)
+
+
+def _picked(count: int) -> list[int]:
+    """Indices of the loiters that serve, evenly spread: the work grows with the cube of their number."""
+    if count <= MOST_LOITERS:
+        return list(range(count))
+    return [index * (count - 1) // (MOST_LOITERS - 1) for index in range(MOST_LOITERS)]
+
+
+def _put_back(loiters: tuple[Loiter, ...], picked: list[int], found: tuple[Loiter, ...]) -> tuple[Loiter, ...]:
+    """All that were found; those that were not picked are not used."""
+    served = dict(zip(picked, loiters, strict=True))
+    return tuple(served.get(index, replace(loiter, used=False)) for index, loiter in enumerate(found))
+
+
+def _renumbered(fit: FitResult, picked: list[int]) -> FitResult:
+    """Winds by the numbers of all loiters found."""
+    return replace(fit, wind_by_loiter=tuple(replace(wind, loiter=picked[wind.loiter]) for wind in fit.wind_by_loiter))
 
 
 def _holds_nothing(

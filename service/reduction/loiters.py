@@ -33,8 +33,12 @@ LONGEST_PATTERN_S = 900.0
 CENTRE_WINDOW_S = 240.0
 LARGEST_GAP_S = 5.0
 ENOUGH_COVERAGE_DEG = 230.0
+MOST_FOR_CENTRE = 2500
+"""Velocities that one centre is found from: smoothed over two seconds, more of them tell nothing new."""
 CLEAR_CIRCLE_FACTOR = 3.5
 """Radius over median misfit below which velocities lie on no circle: a normal cloud shows 2 to 3."""
+SLOWEST_AIRSPEED_MPS = 4.0
+"""A smaller circle is the gusts of a straight leg: nothing that carries an airspeed probe flies slower."""
 
 
 def find_loiters(series: AirDataSeries, windows: Sequence[Window] = ()) -> tuple[Loiter, ...]:
@@ -103,6 +107,8 @@ def _smoothed(time_s: FloatArray, values: FloatArray) -> FloatArray:
 
 def _circle_centre(north: FloatArray, east: FloatArray) -> tuple[float, float]:
     """Centre of the circle through (n,) velocities: algebraic least squares, trimmed three times of its outliers."""
+    step = max(1, north.size // MOST_FOR_CENTRE)
+    north, east = north[::step], east[::step]
     keep = np.ones(north.size, dtype=bool)
     centre = (0.0, 0.0)
     for _ in range(4):
@@ -117,7 +123,8 @@ def _circle_centre(north: FloatArray, east: FloatArray) -> tuple[float, float]:
     radius = float(np.median(np.hypot(north - centre[0], east - centre[1])))
     wander = float(np.median(np.abs(np.hypot(north - centre[0], east - centre[1]) - radius)))
     # a cloud about one velocity (a straight leg) has no centre: its headings are those over ground
-    return centre if radius > CLEAR_CIRCLE_FACTOR * wander else (0.0, 0.0)
+    clear = radius > max(CLEAR_CIRCLE_FACTOR * wander, SLOWEST_AIRSPEED_MPS)
+    return centre if clear else (0.0, 0.0)
 
 
 def _centre_in_time(time_s: FloatArray, north: FloatArray, east: FloatArray) -> FloatArray:

@@ -1,5 +1,6 @@
 """A seeded part of the campaign of hostile bodies: `python -m tests.hostile --cases 5000` is the whole."""
 
+from itertools import pairwise
 from pathlib import Path
 
 import numpy as np
@@ -9,7 +10,9 @@ from flask.testing import FlaskClient
 from service.app import create_app
 from service.config import Config
 from service.domain.codes import LogFormat
-from tests.hostile.bases import bases
+from service.domain.settings import Settings, Window
+from service.pipeline import MOST_LOITERS, reduce_flight
+from tests.hostile.bases import bases, flights
 from tests.hostile.bytes_damage import DAMAGES, Damage
 from tests.hostile.cases import KNOWING, make_case
 from tests.hostile.judge import judge, send
@@ -63,3 +66,22 @@ def test_what_is_damaged_was_sound(client: FlaskClient, log_format: LogFormat) -
         answer = client.post("/v1/reductions", data=content, content_type="application/octet-stream")
         verdicts.append(judge(answer)["calibration"]["verdict"])
     assert len(verdicts) - verdicts.count("refused") >= 2
+
+
+@pytest.mark.parametrize(("seed", "number"), [(1, 518), (2, 3602), (3, 4370)])
+def test_what_once_failed(client: FlaskClient, seed: int, number: int) -> None:
+    """An answer as long as the body, memory for a grid over the whole span, a filter wider than any memory."""
+    judge(send(client, make_case(seed, number)))
+
+
+def test_many_loiters_are_thinned() -> None:
+    """A thousand windows made a fit of thousands of unknowns, and no end."""
+    log = flights()[0]
+    assert log.gps is not None
+    edges = np.linspace(log.gps.time_s[0], log.gps.time_s[-1], 61).tolist()
+    windows = tuple(Window(start, end) for start, end in pairwise(edges))
+    reduction = reduce_flight(log, Settings(loiters=windows))
+    used = [index for index, loiter in enumerate(reduction.loiters) if loiter.used]
+    assert len(reduction.loiters) > MOST_LOITERS
+    assert 0 < len(used) <= MOST_LOITERS
+    assert [wind.loiter for wind in reduction.wind_by_loiter] == used

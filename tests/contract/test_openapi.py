@@ -128,6 +128,10 @@ _fuzzed = schemathesis.openapi.from_wsgi("/v1/openapi.json", create_app(Config(l
 def test_made_up_requests(case: "schemathesis.Case[Any]") -> None:
     """Whatever is sent, the answer is one that the document promises.
 
+    More of it against a running server (`loiterwise serve`):
+
+        schemathesis run http://127.0.0.1:8000/v1/openapi.json --exclude-checks positive_data_acceptance -n 1000
+
     The one check left out wants every body that fits its schema accepted: no schema says that bytes are a log, or that
     times increase.
     """

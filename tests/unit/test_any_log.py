@@ -150,7 +150,7 @@ class _Draw:
         return GroundContactSamples(t, self._rng.random(t.size) < self._rng.random())
 
 
-@settings(max_examples=150, deadline=None, derandomize=True, suppress_health_check=[HealthCheck.too_slow])
+@settings(max_examples=80, deadline=None, derandomize=True, suppress_health_check=[HealthCheck.too_slow])
 @given(seed=st.integers(0, 2**32 - 1), chosen=st.sampled_from(SETTINGS))
 def test_any_log_has_an_answer(seed: int, chosen: Settings) -> None:
     log = _Draw(seed).log()

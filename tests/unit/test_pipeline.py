@@ -359,7 +359,7 @@ def test_what_the_reader_noticed_is_passed_on() -> None:
 
 
 def test_two_hours_of_circles_are_reduced() -> None:
-    flown = Flown(turns=240, turn_s=30.0, probe_hz=5.0)
+    flown = Flown(turns=240, probe_hz=5.0)
     answer = reduced(flown)
     assert_recovered(answer, flown, deviations=4.0)
     assert answer.airspeed is not None

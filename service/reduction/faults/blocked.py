@@ -59,7 +59,8 @@ def find_blocked(evidence: FlightEvidence) -> list[Finding]:
 def _sensed_share(evidence: FlightEvidence, where: IntArray) -> FloatArray:
     """Smoothed reading above zero over the dynamic pressure by GPS, at the samples `where`."""
     assert evidence.zero is not None
-    width = max(round(SMOOTHING_S / evidence.interval_s), 1)
+    # no wider than the data: a hostile log may claim a billion samples a second
+    width = max(min(round(SMOOTHING_S / evidence.interval_s), where.size), 1)
     reading = evidence.reading_pa[where] - evidence.zero.value_pa
     smooth = uniform_filter1d(median_filter(reading, 3, mode="nearest"), width, mode="nearest")
     return np.asarray(smooth / np.maximum(evidence.expected_pa[where], 1.0))

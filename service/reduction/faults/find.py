@@ -27,10 +27,10 @@ CHECKS: tuple[tuple[tuple[FaultKind, ...], Check], ...] = (
     ((FaultKind.SATURATED,), find_saturated),
     ((FaultKind.FROZEN,), find_frozen),
     ((FaultKind.SPIKES,), find_spikes),
+    ((FaultKind.FROZEN_STATIC,), find_frozen_static),
     ((FaultKind.BLOCKED,), find_blocked),
     ((FaultKind.TRAPPED, FaultKind.BLOCKED), find_no_airflow),
     ((FaultKind.SWAPPED,), find_swapped),
-    ((FaultKind.FROZEN_STATIC,), find_frozen_static),
 )
 """What each check may find, in the order in which they look. A later one does not see samples that an earlier one has
 claimed: single samples go first (a frozen run must not pass for a closed probe), whole stretches after them."""

@@ -70,4 +70,6 @@ def _correlation(first: FloatArray, second: FloatArray) -> float:
 
 
 def _smoothed(values: FloatArray, interval_s: float) -> FloatArray:
-    return np.asarray(uniform_filter1d(values, max(round(SMOOTHING_S / interval_s), 1), mode="nearest"))
+    return np.asarray(
+        uniform_filter1d(values, max(min(round(SMOOTHING_S / interval_s), values.size), 1), mode="nearest")
+    )

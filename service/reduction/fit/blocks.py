@@ -14,13 +14,15 @@ from service.domain.arrays import BoolArray, FloatArray, IntArray
 from service.domain.codes import Direction
 from service.domain.results import AirDataSeries, Loiter
 
-BLOCKS_PER_TURN = 20
+BLOCKS_PER_TURN = 48
 MOST_BLOCKS = 320
-LEG_BLOCK_S = 3.0
+LEG_BLOCK_S = 1.5
 """Length of a block on patterns of legs."""
 LEG_MEMORY_S = 25.0
 """Over this time the motion on legs is smoothed where circles use one turn."""
 FEWEST_TURN_BLOCKS = 10
+MOST_PER_BLOCK = 30
+"""Samples of a block that are used, evenly spread: more are recorded only above 10 Hz, and tell the same again."""
 
 
 @dataclass(frozen=True, slots=True)
@@ -89,7 +91,9 @@ def gather_blocks(series: AirDataSeries, loiters: Sequence[Loiter]) -> Blocks | 
     sample, key = np.concatenate(indices), np.concatenate(keys)
     kept = _thinned(key, memory)
     sample, key = sample[kept], key[kept]
-    first = np.flatnonzero(np.concatenate([[True], (np.diff(key, axis=0) != 0).any(axis=1)]))
+    kept = _few_per_block(key)
+    sample, key = sample[kept], key[kept]
+    first = np.flatnonzero(_begins_block(key))
     return Blocks(
         time_s=series.gps_time_s[sample],
         velocity_mps=np.column_stack(
@@ -123,13 +127,26 @@ def _block_seconds(loiters: Sequence[Loiter], interval_s: float) -> float:
     return max(interval_s, min(max(shortest, total / MOST_BLOCKS), coarsest))
 
 
-def _thinned(key: FloatArray | IntArray, memory: IntArray) -> BoolArray:
+def _thinned(key: IntArray, memory: IntArray) -> BoolArray:
     """(m,) whether each sample stays: whole turns, evenly spread, until no more than MOST_BLOCKS blocks are left."""
-    blocks = np.unique(key, axis=0).shape[0]
-    keep_share = MOST_BLOCKS / max(blocks, 1)
+    keep_share = MOST_BLOCKS / max(int(_begins_block(key).sum()), 1)
     if keep_share >= 1.0:
         return np.ones(key.shape[0], dtype=bool)
     turn = key[:, 1] // memory[key[:, 0]]
     # a low-discrepancy pick keeps turns spread over every loiter and always the first of each
     picked = np.floor((turn + 1) * keep_share) > np.floor(turn * keep_share)
     return np.asarray(picked | (turn == 0))
+
+
+def _begins_block(key: IntArray) -> BoolArray:
+    """(m,) whether a sample is the first of its block; samples stand by block."""
+    return np.concatenate([[True], (np.diff(key, axis=0) != 0).any(axis=1)])
+
+
+def _few_per_block(key: IntArray) -> BoolArray:
+    """(m,) whether each sample stays, so that no block has more than MOST_PER_BLOCK."""
+    first = np.flatnonzero(_begins_block(key))
+    counts = np.diff(np.concatenate([first, [len(key)]]))
+    rank = np.arange(len(key)) - np.repeat(first, counts)
+    step = np.repeat(-(-counts // MOST_PER_BLOCK), counts)
+    return np.asarray(rank % step == 0)

@@ -10,6 +10,7 @@ from scipy.signal import lfilter
 from service.domain.arrays import FloatArray
 from service.domain.log import StaticSamples
 from service.domain.results import AirDataSeries
+from tests.unit.reduction.constructed import series_of
 
 WIND_NORTH_MPS, WIND_EAST_MPS = 3.0, -5.0
 AIRSPEED_MPS = 17.0
@@ -72,14 +73,10 @@ def circling(
     moving = np.interp(gps_s, time_s, flies.astype(float)) > 0.5
     # GPS sees the commanded airspeed; what the gusts do to the ground speed is small beside it.
     along = np.where(moving, AIRSPEED_MPS if speed_mps is None else speed_mps, 0.0)
-    series = AirDataSeries(
+    series = series_of(
+        dynamic_pa / pressure_scale + zero_pa + rng.normal(0.0, noise_pa, time_s.size),
         time_s=time_s,
-        reordered=np.zeros(time_s.size, dtype=bool),
-        reading_pa=dynamic_pa / pressure_scale + zero_pa + rng.normal(0.0, noise_pa, time_s.size),
         static_pressure_pa=static_pa,
-        air_temperature_k=np.full(time_s.size, 288.15),
-        temperature_uncertainty_k=1.0,
-        static_uncertainty_pa=50.0,
         altitude_m=height_m,
         on_ground=~flies,
         at_rest=~flies,
@@ -87,15 +84,8 @@ def circling(
         velocity_north_mps=along * np.cos(heading) + WIND_NORTH_MPS * moving + rng.normal(0.0, 0.07, gps_s.size),
         velocity_east_mps=along * np.sin(heading) + WIND_EAST_MPS * moving + rng.normal(0.0, 0.07, gps_s.size),
         velocity_down_mps=np.zeros(gps_s.size),
-        has_velocity_down=True,
         gps_altitude_m=np.interp(gps_s, time_s, height_m) + rng.normal(0.0, 0.3, gps_s.size),
         gps_on_ground=~moving,
-        compensated_zero=True,
-        standard_static=False,
-        standard_temperature=False,
-        probe_source="probe",
-        static_source="static",
-        temperature_source="temperature",
     )
     static = StaticSamples(time_s, static_pa + rng.normal(0.0, 1.5, time_s.size), "static")
     return Circling(replace(series, **changes), static, dynamic_pa)

@@ -375,6 +375,39 @@ def test_a_rounded_static_pressure_is_not_frozen(step_pa: float) -> None:
     assert report_of(flight, series, static=static).faults == ()
 
 
+def climb_out(flight: Circling, port_follows: bool, shared: bool) -> FaultReport:
+    """A climb of 60 m within the span, with a static port that follows or not, that the probe shares or not."""
+    climbed = 60.0 * np.clip((flight.time_s - START_S) / (END_S - START_S), 0.0, 1.0)
+    by_gps = np.interp(flight.series.gps_time_s, flight.time_s, climbed)
+    drop = PASCAL_PER_METRE * climbed
+    series = replace(
+        flight.reading(flight.series.reading_pa - (drop if shared else 0.0)),
+        gps_altitude_m=flight.series.gps_altitude_m + by_gps,
+        altitude_m=flight.series.altitude_m + climbed,
+    )
+    pressure = flight.static.static_pressure_pa - (drop if port_follows else 0.0)
+    return report_of(flight, series, static=replace(flight.static, static_pressure_pa=pressure))
+
+
+def test_a_static_port_that_follows_the_climb_is_sound() -> None:
+    assert climb_out(circling(), port_follows=True, shared=False).faults == ()
+
+
+def test_a_blocked_static_port_is_frozen_though_its_noise_goes_on() -> None:
+    report = climb_out(circling(), port_follows=False, shared=False)
+    fault = only_fault(report, FaultKind.FROZEN_STATIC)
+    assert_span(fault, near_s=30.0)
+    assert "port" in fault.message
+    assert report.static_faulty[inside(circling())].all()
+    assert not report.probe_faulty.any()
+
+
+def test_a_blocked_port_that_the_probe_shares_spoils_the_reading() -> None:
+    report = climb_out(circling(), port_follows=False, shared=True)
+    assert FaultKind.FROZEN_STATIC in {fault.fault for fault in report.faults}
+    assert report.probe_faulty[inside(circling())].all()
+
+
 # --- the report ------------------------------------------------------------------------------------------------------
 
 

@@ -28,7 +28,7 @@ from service.readers.plausible import POSSIBLE
 Columns = Mapping[str, FloatArray]
 """Column name -> values, `time_s` among them."""
 
-GIVEN_TEMPERATURE_UNCERTAINTY_K = 2.0
+GIVEN_TEMPERATURE_UNCERTAINTY_K = 1.0
 """Of a temperature that the user calls the air's, from a sensor unknown to us."""
 LOWEST_FIX = 3.0
 """Kind of GPS fix from which on a velocity is valid."""

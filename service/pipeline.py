@@ -30,8 +30,15 @@ from service.domain.settings import Settings
 from service.reduction.configuration import configuration_in_force
 from service.reduction.correction import corrected_series
 from service.reduction.faults import find_faults, find_scale_step
-from service.reduction.fit import DelayPrior, OffsetPrior, PreliminaryFit, fit_scale_and_wind, preliminary_fit
-from service.reduction.gps_delay import delay_from_heading, prior_delay
+from service.reduction.fit import (
+    DelayPrior,
+    OffsetPrior,
+    PreliminaryFit,
+    contradicts_zero,
+    fit_scale_and_wind,
+    preliminary_fit,
+)
+from service.reduction.gps_delay import GpsDelay, delay_from_heading, prior_delay
 from service.reduction.load_factor import load_factor_at
 from service.reduction.loiters import find_loiters, joint_coverage
 from service.reduction.margins import stall_margins
@@ -39,11 +46,11 @@ from service.reduction.phases import find_ground_phases
 from service.reduction.series import build_series
 from service.reduction.stall_warnings import stall_warnings
 from service.reduction.verdict import LEAST_COVERAGE_DEG, calibration_of, coverage_reason, refusal_of, refused
-from service.reduction.zero import WindAloft, rest_readings, zero_offset
+from service.reduction.zero import WindAloft, rest_readings, unknown_zero_offset, zero_offset
 
 Progress = Callable[[float], None]
 
-MOST_LOITERS = 24
+MOST_LOITERS = 16
 """Loiters that one fit takes; more, of very long flights or of a client's windows, are thinned evenly."""
 
 
@@ -117,30 +124,35 @@ def _calibrate(log: DecodedLog, series: AirDataSeries, settings: Settings, fault
     found = find_loiters(series, settings.loiters)
     picked = _picked(len(found))
     loiters = tuple(found[index] for index in picked)
+    remarks = _remarks(log, faults)
+
+    def without_answer(reason: ReasonGiven) -> _Outcome:
+        return _Outcome(refused([reason, *remarks], zero.source), found, None, faults, zero)
+
     reason = _holds_nothing(log, series, usable, faults, loiters)
     if reason is not None:
-        return _Outcome(refused([reason], zero.source), found, None, faults, zero)
+        return without_answer(reason)
     first = _first_fit(series, usable, loiters, zero)
     if isinstance(first, ReasonGiven):
-        return _Outcome(refused([first], zero.source), found, None, faults, zero)
-    wind = _wind_aloft(series, first)
-    zero = zero_offset(series, settings.probe, rests, wind)
-    fit = _full_fit(log, series, usable, loiters, zero)
-    if isinstance(fit, ReasonGiven):
-        return _Outcome(refused([fit], zero.source), found, None, faults, zero)
+        return without_answer(first)
+    zero = zero_offset(series, settings.probe, rests, _wind_aloft(series, first))
+    if contradicts_zero(first, _offset_prior(zero), _delay_prior(prior_delay())):
+        remarks.insert(0, _contradiction(zero))
+        zero = unknown_zero_offset()
+    fit = _full_fit(log, series, loiters, zero, first)
     step = find_scale_step(fit.points, loiters, fit)
-    remarks = _remarks(log, faults)
     if step is not None:
         faults = _with_step(series, faults, step)
-        remarks = [ReasonGiven(Reason.SCALE_CHANGED, step.message), *remarks]
-        fit = _full_fit(log, series, usable & ~faults.probe_faulty, loiters, zero)
-        if isinstance(fit, ReasonGiven):
-            return _Outcome(refused([fit, *remarks], zero.source), found, None, faults, zero)
+        remarks.insert(0, ReasonGiven(Reason.SCALE_CHANGED, step.message))
+        first = _first_fit(series, usable & ~faults.probe_faulty, loiters, zero)
+        if isinstance(first, ReasonGiven):
+            return without_answer(first)
+        fit = _full_fit(log, series, loiters, zero, first)
     refusal = refusal_of(fit)
     if refusal is not None:
-        return _Outcome(refused([refusal, *remarks], zero.source), found, None, faults, zero)
-    loiters = _with_fitted_speed(loiters, fit)
+        return without_answer(refusal)
     calibration = calibration_of(fit, series, loiters, zero, settings.probe, remarks)
+    loiters = _with_fitted_speed(loiters, fit)
     return _Outcome(calibration, _put_back(loiters, picked, found), _renumbered(fit, picked), faults, zero)
 
 
@@ -181,7 +193,9 @@ def _holds_nothing(
         return _fault_reason(faults)
     if not loiters:
         return ReasonGiven(Reason.TOO_FEW_SAMPLES, "The GPS has too few samples in the air.")
-    coverage = joint_coverage(series, loiters)
+    coverage = max(loiter.heading_coverage_deg for loiter in loiters)
+    if coverage < LEAST_COVERAGE_DEG:
+        coverage = joint_coverage(series, loiters)
     if coverage < LEAST_COVERAGE_DEG:
         return coverage_reason(coverage)
     in_loiters = np.zeros(series.time_s.size, dtype=bool)
@@ -199,34 +213,34 @@ def _fault_reason(faults: FaultReport) -> ReasonGiven:
     return ReasonGiven(code, longest.message if longest else "The probe gave no usable reading in flight.")
 
 
+def _contradiction(zero: ZeroOffset) -> ReasonGiven:
+    return ReasonGiven(
+        Reason.ZERO_OFFSET_CONTRADICTED,
+        f"The speeds flown contradict the zero offset of {zero.value_pa:.1f} ± {zero.standard_uncertainty_pa:.1f} Pa "
+        f"({zero.source}); it was fitted instead. Record it at rest before take-off.",
+    )
+
+
 def _first_fit(
     series: AirDataSeries, usable: BoolArray, loiters: tuple[Loiter, ...], zero: ZeroOffset
 ) -> PreliminaryFit | ReasonGiven:
-    delay = prior_delay()
-    return preliminary_fit(
-        series,
-        usable & ~series.on_ground,
-        loiters,
-        OffsetPrior(zero.value_pa, zero.standard_uncertainty_pa),
-        DelayPrior(delay.value_s, delay.standard_uncertainty_s),
-    )
+    airborne = usable & ~series.on_ground
+    return preliminary_fit(series, airborne, loiters, _offset_prior(zero), _delay_prior(prior_delay()))
 
 
 def _full_fit(
-    log: DecodedLog, series: AirDataSeries, usable: BoolArray, loiters: tuple[Loiter, ...], zero: ZeroOffset
-) -> FitResult | ReasonGiven:
-    first = _first_fit(series, usable, loiters, zero)
-    if isinstance(first, ReasonGiven):
-        return first
+    log: DecodedLog, series: AirDataSeries, loiters: tuple[Loiter, ...], zero: ZeroOffset, first: PreliminaryFit
+) -> FitResult:
     delay = delay_from_heading(first.blocks.time_s, first.air_heading_rad(), first.turn_numbers(), log.attitude)
-    return fit_scale_and_wind(
-        series,
-        loiters,
-        first,
-        OffsetPrior(zero.value_pa, zero.standard_uncertainty_pa),
-        zero.source,
-        DelayPrior(delay.value_s, delay.standard_uncertainty_s),
-    )
+    return fit_scale_and_wind(series, loiters, first, _offset_prior(zero), zero.source, _delay_prior(delay))
+
+
+def _offset_prior(zero: ZeroOffset) -> OffsetPrior:
+    return OffsetPrior(zero.value_pa, zero.standard_uncertainty_pa)
+
+
+def _delay_prior(delay: GpsDelay) -> DelayPrior:
+    return DelayPrior(delay.value_s, delay.standard_uncertainty_s)
 
 
 def _wind_aloft(series: AirDataSeries, first: PreliminaryFit) -> WindAloft | None:

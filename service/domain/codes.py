@@ -68,6 +68,7 @@ class Reason(StrEnum):
     INTERVAL_WIDE = "interval_wide"
     LOITERS_DISAGREE = "loiters_disagree"
     ZERO_OFFSET_ASSUMED = "zero_offset_assumed"
+    ZERO_OFFSET_CONTRADICTED = "zero_offset_contradicted"
     STANDARD_TEMPERATURE = "standard_temperature"
     STANDARD_STATIC = "standard_static"
     STALE_AIR = "stale_air"

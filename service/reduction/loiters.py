@@ -19,6 +19,7 @@ from service.domain.settings import Window
 from service.domain.spans import runs
 
 SMOOTHING_S = 2.0
+FINEST_INTERVAL_S = 0.2
 SHORTEST_LOITER_TURN_DEG = 350.0
 SLOWEST_TURN_DEG_PER_S = 0.8
 """A circle of 450 s: slower ones are told from a wandering straight leg only by luck."""
@@ -83,6 +84,9 @@ def _headings(series: AirDataSeries) -> tuple[FloatArray, FloatArray, FloatArray
     time_s = series.gps_time_s[airborne]
     north = _smoothed(time_s, series.velocity_north_mps[airborne])
     east = _smoothed(time_s, series.velocity_east_mps[airborne])
+    # smoothed over two seconds, more than five velocities a second tell nothing new
+    step = max(int(FINEST_INTERVAL_S / max(float(np.median(np.diff(time_s))), 1e-3)), 1)
+    time_s, north, east = time_s[::step], north[::step], east[::step]
     centre = _centre_in_time(time_s, north, east)
     heading = np.degrees(np.unwrap(np.arctan2(east - centre[1], north - centre[0])))
     return time_s, heading, np.hypot(east - centre[1], north - centre[0])

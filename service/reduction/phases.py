@@ -22,7 +22,8 @@ LIFT_OFF_M = 2.0
 """Height above the resting height at which the aircraft counts as airborne."""
 LIFT_OFF_SPEED_MPS = 6.0
 """Ground speed that ends rolling where no height is known."""
-LONGEST_ROLL_S = 60.0
+LONGEST_ROLL_S = 180.0
+"""Taxi, roll and wait on the ground: minutes, where the height does not rise."""
 STILL_HEIGHT_M = 1.5
 EDGE_S = 1.0
 """Cut from either end of a rest: it is found by a smoothed speed."""

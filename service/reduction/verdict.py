@@ -30,7 +30,9 @@ DISAGREEING_LOITERS = 0.003
 FEW_TURNS = 3.0
 STALE_AIR_MPS = 1.5
 """Mean wind below which circles over one spot meet the same gusts again."""
-WEIGHTY = frozenset({Reason.INTERVAL_WIDE, Reason.SCALE_CHANGED, Reason.LOITERS_DISAGREE})
+WEIGHTY = frozenset(
+    {Reason.INTERVAL_WIDE, Reason.SCALE_CHANGED, Reason.LOITERS_DISAGREE, Reason.ZERO_OFFSET_CONTRADICTED}
+)
 """Reasons that make a calibration doubtful; the others are remarks."""
 
 

@@ -22,6 +22,8 @@ COMPENSATED_PRIOR_PA = 1.0
 """A probe whose zero was taken before flight (method notes: N(0, 1 Pa))."""
 RAW_PRIOR_PA = (60.0, 45.0)
 """Value and uncertainty of a raw sensor's zero: 5 to 50 Pa is common practice, 60 to 120 Pa were seen."""
+UNKNOWN_PRIOR_PA = 150.0
+"""Beyond the largest raw zero seen."""
 GIVEN_PA = 0.5
 """Uncertainty of a given zero offset that says none."""
 FEWEST_SAMPLES = 3
@@ -94,6 +96,11 @@ def zero_offset(
     value, prior = (0.0, COMPENSATED_PRIOR_PA) if series.compensated_zero else RAW_PRIOR_PA
     uncertainty = prior if settings.zero_offset_uncertainty_pa is None else settings.zero_offset_uncertainty_pa
     return ZeroOffset(value, max(uncertainty, 1e-3), ZeroOffsetSource.PRIOR, False)
+
+
+def unknown_zero_offset() -> ZeroOffset:
+    """Next to nothing known: for a flight whose own speeds contradict what was assumed."""
+    return ZeroOffset(0.0, UNKNOWN_PRIOR_PA, ZeroOffsetSource.PRIOR, False)
 
 
 def _heading_at_rest(attitude: AttitudeSamples | None, time_s: FloatArray) -> float:

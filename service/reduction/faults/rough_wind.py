@@ -11,6 +11,8 @@ from service.domain.results import AirDataSeries
 
 WINDOW_S = 120.0
 STEP_S = 30.0
+FINEST_INTERVAL_S = 0.2
+"""More than five velocities a second tell no more of a wind."""
 ENOUGH_COVERAGE_DEG = 230.0
 LARGEST_MISFIT = 0.3
 """Of the radius, root mean square: velocities that lie further off the circle tell no wind."""
@@ -29,7 +31,8 @@ def speed_through_air(series: AirDataSeries) -> tuple[FloatArray, bool]:
         return np.full(series.time_s.size, np.nan), False
     flown = ~series.gps_on_ground
     north, east = series.velocity_north_mps, series.velocity_east_mps
-    middles, centres = _winds(time_s[flown], north[flown], east[flown])
+    step = max(int(FINEST_INTERVAL_S / max(float(np.median(np.diff(time_s))), 1e-3)), 1)
+    middles, centres = _winds(*(values[flown][::step] for values in (time_s, north, east)))
     known = middles.size > 0
     wind_north = np.interp(time_s, middles, centres[0]) if known else np.zeros(time_s.size)
     wind_east = np.interp(time_s, middles, centres[1]) if known else np.zeros(time_s.size)

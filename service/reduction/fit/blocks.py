@@ -74,11 +74,21 @@ class Blocks:
 
 def gather_blocks(series: AirDataSeries, loiters: Sequence[Loiter]) -> Blocks | None:
     """Blocks of the loiters that are `used`; None where no sample lies in one."""
-    used = [(index, loiter) for index, loiter in enumerate(loiters) if loiter.used]
     interval_s = float(np.median(np.diff(series.gps_time_s))) if series.gps_time_s.size > 1 else 1.0
-    seconds = _block_seconds([loiter for _, loiter in used], interval_s)
+    seconds = _block_seconds([loiter for loiter in loiters if loiter.used], interval_s)
+    blocks = _blocks_of(series, loiters, seconds)
+    # the first turn of every loiter stays, so thinning alone may leave too many
+    while blocks is not None and blocks.starts.size > 1.5 * MOST_BLOCKS:
+        seconds *= 1.5
+        blocks = _blocks_of(series, loiters, seconds)
+    return blocks
+
+
+def _blocks_of(series: AirDataSeries, loiters: Sequence[Loiter], seconds: float) -> Blocks | None:
     indices, keys, memory = [], [], np.ones(len(loiters), dtype=np.int64)
-    for index, loiter in used:
+    for index, loiter in enumerate(loiters):
+        if not loiter.used:
+            continue
         inside = np.flatnonzero(
             (series.gps_time_s >= loiter.start_s) & (series.gps_time_s <= loiter.end_s) & ~series.gps_on_ground
         )

@@ -1,5 +1,6 @@
 """True airspeed of the probe at the GPS sample times, with its derivatives."""
 
+from collections.abc import Sequence
 from dataclasses import dataclass
 
 import numpy as np
@@ -12,6 +13,8 @@ MARGIN_S = 3.0
 """Probe samples kept about each GPS sample of the fit, for delay and averaging."""
 LONGEST_BRIDGE_S = 1.6
 """Longest gap between usable probe samples over which the airspeed is interpolated (1 Hz recordings exist)."""
+FINEST_INTERVAL_S = 0.1
+"""Faster probes are averaged over this: the air does not change over two metres as an aircraft feels it."""
 LEAST_PRESSURE_PA = 1e-3
 LARGEST_PRESSURE_SHARE = 0.85
 """Of static pressure: just below Mach 1, where the subsonic relation ends."""
@@ -54,6 +57,20 @@ class _Averaging:
         return np.where(self._span_s > 1e-6, (integrals[1] - integrals[0]) / np.maximum(self._span_s, 1e-6), at_a_point)
 
 
+def _binned(columns: Sequence[FloatArray]) -> list[FloatArray]:
+    """Means over FINEST_INTERVAL_S of columns recorded more often, times first; a gap ends a bin."""
+    time_s = columns[0]
+    interval_s = float(np.median(np.diff(time_s))) if time_s.size > 1 else FINEST_INTERVAL_S
+    size = int(FINEST_INTERVAL_S / max(interval_s, 1e-4) + 1e-6)
+    if size < 2:
+        return list(columns)
+    after_gap = np.concatenate([[True], np.diff(time_s) > 2 * interval_s])
+    run_start = np.maximum.accumulate(np.where(after_gap, np.arange(time_s.size), 0))
+    first = np.flatnonzero((np.arange(time_s.size) - run_start) % size == 0)
+    count = np.diff(np.append(first, time_s.size))
+    return [np.add.reduceat(column, first) / count for column in columns]
+
+
 class ProbeSpeed:
     """The usable samples of a probe near the fitted spans, ready to be evaluated for any scale, zero and delay.
 
@@ -63,10 +80,8 @@ class ProbeSpeed:
 
     def __init__(self, series: AirDataSeries, usable: BoolArray, gps_time_s: FloatArray) -> None:
         near = usable & _near(series.time_s, gps_time_s)
-        self._time_s = series.time_s[near]
-        self._reading_pa = series.reading_pa[near]
-        self._static_pa = series.static_pressure_pa[near]
-        self._temperature_k = series.air_temperature_k[near]
+        columns = (series.time_s, series.reading_pa, series.static_pressure_pa, series.air_temperature_k)
+        self._time_s, self._reading_pa, self._static_pa, self._temperature_k = _binned([c[near] for c in columns])
         interval = float(np.median(np.diff(gps_time_s))) if gps_time_s.size > 1 else 0.2
         self._half_s = 0.5 * min(interval, 1.0)
         self._last: tuple[FloatArray, float, _Averaging] | None = None

@@ -57,6 +57,12 @@ from service.reduction.fit.start import (
 )
 
 FEWEST_BLOCKS = 8
+FREE_OFFSET_PA = 1000.0
+CLEAR_DEVIATIONS = 5.0
+LEAST_SPEED_SPREAD = 0.05
+"""Standard deviation over mean of the airspeed below which it tells nothing of the zero offset."""
+CLEAR_GAIN = 0.25
+"""Share of the mean square residual that a freed zero offset must leave to contradict what was assumed."""
 LARGEST_LOG_SCALE = 20.0
 """Keeps senseless data within what a float can raise e to; any such scale is refused."""
 RESIDUAL_FLOOR_MPS = 0.004
@@ -68,8 +74,10 @@ and the ratio r = 0.8 of vertical to horizontal gust variance. Guidance that hol
 of the slow gusts that carry most of the variance, a free aircraft nearly all: c = 0.35 +- 0.3."""
 OFFSET_STEPS = 41
 """Offsets into which each node is split, over four standard deviations to either side."""
-UNLIKELY_SCATTER = 0.1
-"""Chance below which the scatter of the loiters' scales widens the interval."""
+UNLIKELY_SCATTER, UNLIKELY_SCATTER_OF_FEW = 0.1, 0.5
+"""Chance below which the scatter of the loiters' scales widens the interval; so few turns hardly tell the gusts' own
+intensity and length, and any scatter beyond the expected counts."""
+FEW_TURNS = 6.0
 GPS_DRIFT_MPS = 0.007
 """What is left of a receiver's slow velocity error after minutes: about 0.01 kt (check values, section h)."""
 FITTED_ZERO_SHARE = 0.5
@@ -123,6 +131,22 @@ def preliminary_fit(
     return PreliminaryFit(probe, blocks, start_state(probe, blocks, offset, delay) or state)
 
 
+def contradicts_zero(preliminary: PreliminaryFit, offset: OffsetPrior, delay: DelayPrior) -> bool:
+    """Whether speeds flown far apart say that the zero offset is nowhere near its prior."""
+    probe, blocks = preliminary.probe, preliminary.blocks
+    speed = residuals(probe, blocks, preliminary.state).probe.speed_mps
+    if float(np.std(speed)) < LEAST_SPEED_SPREAD * float(np.mean(speed)):
+        return False
+    free = start_state(probe, blocks, OffsetPrior(offset.value_pa, FREE_OFFSET_PA), delay)
+    if free is None or abs(free.zero_offset_pa - offset.value_pa) < CLEAR_DEVIATIONS * offset.standard_uncertainty_pa:
+        return False
+    held, freed = (
+        float(np.mean(blocks.mean(residuals(probe, blocks, state).residual_mps) ** 2))
+        for state in (preliminary.state, free)
+    )
+    return freed < CLEAR_GAIN * held
+
+
 def _too_few(what: str) -> ReasonGiven:
     return ReasonGiven(Reason.TOO_FEW_SAMPLES, f"Too few samples for a fit: {what}.")
 
@@ -145,13 +169,13 @@ def fit_scale_and_wind(
     drift = field_drift(series, blocks, state, now, model, rms)
     path = path_geometry(series, blocks, now, drift)
     posterior = gust_posterior(model, path, wind_targets(blocks, loiters), rms)
-    consistency, widening = _loiters_agree(blocks, model, path, posterior)
+    consistency, widening = _loiters_agree(blocks, loiters, model, path, posterior)
     scale = _log_scale(series, blocks, probe, state, now, posterior, widening)
     return _result(series, loiters, preliminary, state, scale, consistency, posterior, offset, offset_source)
 
 
 def _loiters_agree(
-    blocks: Blocks, model: LinearModel, path: PathGeometry, posterior: GustPosterior
+    blocks: Blocks, loiters: Sequence[Loiter], model: LinearModel, path: PathGeometry, posterior: GustPosterior
 ) -> tuple[float, float]:
     """Chance that loiters of one scale scatter as these do, and the variance factor for those that scatter too much.
 
@@ -176,7 +200,9 @@ def _loiters_agree(
     if freedom == 0:
         return 1.0, 1.0
     chance = float(stats.chi2.sf(square, freedom))
-    return chance, max(square / freedom, 1.0) if chance < UNLIKELY_SCATTER else 1.0
+    few = sum(loiters[index].turns for index in present.tolist()) < FEW_TURNS
+    telling = UNLIKELY_SCATTER_OF_FEW if few else UNLIKELY_SCATTER
+    return chance, max(square / freedom, 1.0) if chance < telling else 1.0
 
 
 def _result(

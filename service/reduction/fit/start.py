@@ -93,12 +93,16 @@ def without_outliers(probe: ProbeSpeed, blocks: Blocks, state: State) -> Blocks:
 
 def clear_delay(probe: ProbeSpeed, blocks: Blocks, state: State, offset: OffsetPrior, delay: DelayPrior) -> DelayPrior:
     """The delay that the data show beyond doubt (quick changes of speed in calm air), else the prior."""
-    rms = np.array(
-        [
-            _iterate(probe, blocks, replace(state, delay_s=tried), offset, steps=2)[1]
-            for tried in DELAYS_TRIED_S.tolist()
-        ]
-    )
+
+    def misfit(delays_s: FloatArray) -> FloatArray:
+        return np.array(
+            [_iterate(probe, blocks, replace(state, delay_s=tried), offset, steps=2)[1] for tried in delays_s.tolist()]
+        )
+
+    coarse = misfit(DELAYS_TRIED_S[::4])
+    if coarse.min() > CLEAR_DELAY_SHARE**0.5 * float(np.interp(delay.value_s, DELAYS_TRIED_S[::4], coarse)):
+        return delay
+    rms = misfit(DELAYS_TRIED_S)
     at_prior = float(np.interp(delay.value_s, DELAYS_TRIED_S, rms))
     best = int(np.argmin(rms))
     if rms[best] > CLEAR_DELAY_SHARE * at_prior:

@@ -12,6 +12,7 @@ from itertools import pairwise
 
 import numpy as np
 
+from service.airdata.wind_triangle import heading_coverage
 from service.domain.arrays import FloatArray
 from service.domain.codes import Direction
 from service.domain.results import AirDataSeries, Loiter
@@ -59,15 +60,6 @@ def find_loiters(series: AirDataSeries, windows: Sequence[Window] = ()) -> tuple
         return tuple(circles)
     patterns = [_loiter(time_s, heading, speed, start, end) for start, end in _patterns(time_s)]
     return tuple(replace(p, direction=Direction.STRAIGHT) for p in patterns if p is not None)
-
-
-def heading_coverage(heading_deg: FloatArray) -> float:
-    """360 degrees minus the largest gap in the headings (n,); 0 for fewer than two. [deg]"""
-    if heading_deg.size < 2:
-        return 0.0
-    ordered = np.sort(np.mod(heading_deg, 360.0))
-    gaps = np.diff(np.concatenate([ordered, ordered[:1] + 360.0]))
-    return float(360.0 - gaps.max())
 
 
 def joint_coverage(series: AirDataSeries, loiters: Sequence[Loiter]) -> float:

@@ -14,6 +14,7 @@ from typing import Protocol
 
 import numpy as np
 
+from service.airdata.constants import SEA_LEVEL_DENSITY_KGPM3
 from service.domain.arrays import BoolArray, FloatArray
 from service.domain.codes import FaultKind
 from service.domain.results import AirDataSeries, Estimate, Fault, FittedPoints, Loiter
@@ -28,6 +29,16 @@ LEAST_LEVEL = 3.0
 """Deviations that the level alone must show."""
 LARGEST_DISAGREEMENT = 16.0
 """Chi-square of level and edges about their mean."""
+ONE_EDGE_ALONE = 7.0
+TWO_EDGES_ALONE = 9.0
+"""Deviations at which edges are told where the level cannot tell, or is uncertain: gusts make edges of 4.5 at most."""
+CONFIRMING_SHARE = 0.25
+"""Of the edge's step, that the level must then show if it can tell."""
+SLOWEST_INTERVAL_S = 0.25
+"""Between slower samples a manoeuvre makes an edge as well: there the level must speak."""
+NARROWEST = 3
+"""Points within a span that edges alone tell, and outside of it."""
+LEAST_ZERO_UNCERTAINTY_PA = 1.0
 LEAST_STEP = 0.02
 """Of speed: smaller ones are not worth a word."""
 
@@ -36,7 +47,13 @@ class Fitted(Protocol):
     """What is asked of the fit."""
 
     @property
+    def pressure_scale(self) -> float: ...
+
+    @property
     def zero_offset_pa(self) -> float: ...
+
+    @property
+    def covariance(self) -> FloatArray: ...
 
     @property
     def gps_delay_s(self) -> Estimate | None: ...
@@ -69,12 +86,14 @@ def find_scale_step(
     """
     if points.time_s.size < FEWEST_POINTS or not loiters:
         return None
-    levels = levels_of_spans(points)
+    # What a wrong zero adds to the speed V: K / density times its error, over V.
+    zero_pa = max(float(np.sqrt(max(fit.covariance[1, 1], 0.0))), LEAST_ZERO_UNCERTAINTY_PA)
+    levels = levels_of_spans(points, fit.pressure_scale * zero_pa / SEA_LEVEL_DENSITY_KGPM3)
     delay_s = fit.gps_delay_s.value if fit.gps_delay_s is not None else 0.0
     time_s = levels.points.time_s - delay_s
     edges = _edges(series, usable, fit)
     opening, closing = _edge_measure(edges, time_s, -1.0), _edge_measure(edges, time_s, 1.0)
-    found = _likeliest(*levels.between(), opening, closing)
+    found = _likeliest(*levels.between(), opening, closing, _quick(series))
     if found is None:
         return None
     start, end, step = found
@@ -105,6 +124,12 @@ def _edges(series: AirDataSeries | None, usable: BoolArray | None, fit: Fitted) 
     return edges_of_reading(series.time_s[chosen], series.reading_pa[chosen] - fit.zero_offset_pa)
 
 
+def _quick(series: AirDataSeries | None) -> bool:
+    if series is None or series.time_s.size < 2:
+        return False
+    return float(np.median(np.diff(series.time_s))) <= SLOWEST_INTERVAL_S
+
+
 def _edge_measure(edges: Edges, time_s: FloatArray, sign: float) -> _Measure:
     """The strongest edge of a sign between each two neighbouring points, as a measure of the step at that boundary."""
     count = time_s.size + 1
@@ -118,25 +143,45 @@ def _edge_measure(edges: Edges, time_s: FloatArray, sign: float) -> _Measure:
 
 
 def _likeliest(
-    level: FloatArray, variance: FloatArray, opening: _Measure, closing: _Measure
+    level: FloatArray, variance: FloatArray, opening: _Measure, closing: _Measure, quick: bool
 ) -> tuple[int, int, float] | None:
-    """Boundaries and size of the most significant step down, if it is significant."""
-    measures = (
-        (level, 1.0 / variance),
-        (opening.value[:, None], opening.weight[:, None]),
-        (closing.value[None, :], closing.weight[None, :]),
-    )
-    weight = sum((w for _, w in measures), np.zeros_like(level))
-    mean = sum((v * w for v, w in measures), np.zeros_like(level)) / np.maximum(weight, 1e-12)
-    disagreement = sum(((v - mean) ** 2 * w for v, w in measures), np.zeros_like(level))
-    told = np.isfinite(variance) & (mean < -LEAST_STEP) & (disagreement < LARGEST_DISAGREEMENT)
-    told &= level < -LEAST_LEVEL * np.sqrt(np.where(np.isfinite(variance), variance, 0.0))
-    significance = np.where(told, -mean * np.sqrt(weight), 0.0)
-    stays = np.zeros_like(told)
-    stays[0, :] = stays[:, -1] = True
-    excess = significance / np.where(stays, ONE_EDGE, TWO_EDGES)
+    """Boundaries and size of the most significant step down, if it is significant; `quick` edges may speak alone."""
+    edges = ((opening.value[:, None], opening.weight[:, None]), (closing.value[None, :], closing.weight[None, :]))
+    mean, weight, disagreement = _average((level, 1.0 / variance), *edges)
+    agreed = (disagreement < LARGEST_DISAGREEMENT) & (mean < -LEAST_STEP)
+    agreed &= level < -LEAST_LEVEL * np.sqrt(np.where(np.isfinite(variance), variance, 0.0))
+    excess = np.where(agreed, -mean * np.sqrt(weight), 0.0) / _threshold(level.shape, ONE_EDGE, TWO_EDGES)
+    if quick:
+        edge, edge_weight, _ = _average(*edges)
+        confirmed = ~np.isfinite(variance) | (level < CONFIRMING_SHARE * edge)
+        alone = confirmed & (edge < -LEAST_STEP) & _wide(level.shape)
+        edge_excess = np.where(alone, -edge * np.sqrt(edge_weight), 0.0)
+        edge_excess /= _threshold(level.shape, ONE_EDGE_ALONE, TWO_EDGES_ALONE)
+        mean = np.where(edge_excess > excess, edge, mean)
+        excess = np.maximum(excess, edge_excess)
     start, end = np.unravel_index(int(np.argmax(excess)), excess.shape)
     return (int(start), int(end), float(mean[start, end])) if excess[start, end] >= 1.0 else None
+
+
+def _average(*measures: tuple[FloatArray, FloatArray]) -> tuple[FloatArray, FloatArray, FloatArray]:
+    """Weighted mean, its weight, and chi-square of the measures (values, weights) about it."""
+    weight = np.asarray(sum(w for _, w in measures))
+    mean = np.asarray(sum(v * w for v, w in measures)) / np.maximum(weight, 1e-12)
+    return mean, weight, np.asarray(sum((v - mean) ** 2 * w for v, w in measures))
+
+
+def _threshold(shape: tuple[int, ...], stays: float, closes: float) -> FloatArray:
+    """For spans that reach an end of the flight, and for those between two edges."""
+    threshold = np.full(shape, closes)
+    threshold[0, :] = threshold[:, -1] = stays
+    return threshold
+
+
+def _wide(shape: tuple[int, ...]) -> BoolArray:
+    """Spans that hold some points, and leave some outside."""
+    wide = np.triu(np.ones(shape, dtype=bool), NARROWEST)
+    wide[:NARROWEST, -NARROWEST:] = False
+    return wide
 
 
 def _time_of(measure: _Measure, time_s: FloatArray, boundary: int) -> float:

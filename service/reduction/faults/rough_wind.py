@@ -6,6 +6,7 @@ Kasa 1976), one per window; a window whose headings do not go round tells none.
 
 import numpy as np
 
+from service.airdata.wind_triangle import direction_from_components, heading_coverage
 from service.domain.arrays import FloatArray, IntArray
 from service.domain.results import AirDataSeries
 
@@ -61,8 +62,8 @@ def _winds_of_windows(
     told = (high - low >= FEWEST_SAMPLES) & (misfit < LARGEST_MISFIT * radius) & (radius > SMALLEST_RADIUS_MPS)
     for index in np.flatnonzero(told):
         window = slice(low[index], high[index])
-        heading = np.arctan2(east[window] - centres[1, index], north[window] - centres[0, index])
-        told[index] = _coverage_deg(heading) >= ENOUGH_COVERAGE_DEG
+        heading = direction_from_components(north[window] - centres[0, index], east[window] - centres[1, index])
+        told[index] = heading_coverage(heading) >= ENOUGH_COVERAGE_DEG
     return (0.5 * (time_s[np.minimum(low, time_s.size - 1)] + time_s[np.maximum(high - 1, 0)]))[told], centres[:, told]
 
 
@@ -102,9 +103,3 @@ def _circles(
     scatter = np.sqrt(np.maximum(second - (mean - a * a - b * b) ** 2, 0.0))
     radius = np.sqrt(np.maximum(mean, 1e-12))
     return centre, radius, np.where(usable, scatter / (2 * radius), np.inf)
-
-
-def _coverage_deg(heading_rad: FloatArray) -> float:
-    ordered = np.sort(heading_rad)
-    gaps = np.diff(np.concatenate([ordered, ordered[:1] + 2 * np.pi]))
-    return float(360.0 - np.degrees(gaps.max()))

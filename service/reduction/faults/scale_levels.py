@@ -3,7 +3,7 @@
 Probe airspeed minus wind-corrected ground speed is compared by generalised least squares with the covariance of a gust
 field carried by the air mass. Length and life of the field are chosen by restricted likelihood (Patterson and Thompson,
 Recovery of inter-block information when block sizes are unequal, Biometrika 58 (1971) 545-554); scale and winds of the
-loiters, drift included, are left free.
+loiters, drift included, are left free; the zero offset as free as the fit left it.
 """
 
 from dataclasses import dataclass
@@ -21,7 +21,7 @@ LIVES_S = (np.inf, 60.0, 15.0)
 """In which a gust at one place in the air mass is another; in still air circles meet the same gusts again and again."""
 NOISE_SHARE = 0.03
 """Of the gust's variance: what GPS and sensor noise leave in a point."""
-SLOWEST_MPS = 1.0
+LEAST_SPEED_MPS = 1e-3
 LEAST_VARIANCE = 1e-12
 LEAST_STRENGTH = 1e-6
 LEAST_INFORMATION = 0.01
@@ -49,8 +49,13 @@ class Levels:
         return step, np.where(upper, 1.0 / safe, np.inf)
 
 
-def levels_of_spans(points: FittedPoints) -> Levels:
-    """Levels of all spans of the (k,) points, thinned."""
+def levels_of_spans(points: FittedPoints, zero_doubt: float = 0.0) -> Levels:
+    """Levels of all spans of the (k,) points, thinned.
+
+    Parameters
+    ----------
+    zero_doubt : what the uncertainty of the zero offset adds to the speed, times the speed. [m2/s2]
+    """
     points = _thinned(points)
     air, directions = _air_path(points)
     seconds = float(np.median(np.diff(points.time_s)))
@@ -59,16 +64,20 @@ def levels_of_spans(points: FittedPoints) -> Levels:
     residual = points.probe_true_airspeed_mps - speed
     nuisance = _nuisance(points, directions)
     apart_s = np.abs(points.time_s[:, None] - points.time_s[None, :])
-    covariances = (geometry.covariance(length) * np.exp(-apart_s / life) for length in LENGTHS_M for life in LIVES_S)
+    usual = max(float(np.sqrt(np.mean(residual**2))), LEAST_SPEED_MPS)
+    zero = zero_doubt / np.maximum(speed, LEAST_SPEED_MPS) / usual
+    fixed = NOISE_SHARE * np.eye(residual.size) + np.outer(zero, zero)
+    covariances = (
+        geometry.covariance(length) * np.exp(-apart_s / life) + fixed for length in LENGTHS_M for life in LIVES_S
+    )
     _, projector, variance = max((_generalised(c, residual, nuisance) for c in covariances), key=lambda g: g[0])
     before = np.tri(speed.size + 1, speed.size, -1).T * speed[:, None]
     weighted = projector @ before / variance
     return Levels(points, weighted.T @ residual, before.T @ weighted)
 
 
-def _generalised(gusts: FloatArray, residual: FloatArray, nuisance: FloatArray) -> tuple[float, FloatArray, float]:
+def _generalised(covariance: FloatArray, residual: FloatArray, nuisance: FloatArray) -> tuple[float, FloatArray, float]:
     """Restricted log-likelihood, projector that weighs and takes out the nuisance, and the variance of the gust."""
-    covariance = gusts + NOISE_SHARE * np.eye(residual.size)
     factor = linalg.cho_factor(covariance, lower=True)
     inverse = linalg.cho_solve(factor, np.eye(residual.size))
     weighted = inverse @ nuisance
@@ -81,9 +90,8 @@ def _generalised(gusts: FloatArray, residual: FloatArray, nuisance: FloatArray) 
 
 
 def _nuisance(points: FittedPoints, directions: FloatArray) -> FloatArray:
-    """(k, p) orthonormal: what a wrong scale or zero, and a wrong, drifting wind in each loiter, add."""
-    # A wrong zero offset changes the speed by its pressure over the speed.
-    columns = [points.wind_corrected_speed_mps, 1.0 / np.maximum(points.wind_corrected_speed_mps, SLOWEST_MPS)]
+    """(k, p) orthonormal: what a wrong scale, and a wrong, drifting wind in each loiter, add."""
+    columns = [points.wind_corrected_speed_mps]
     for loiter in np.unique(points.loiter):
         inside = points.loiter == loiter
         time = points.time_s - points.time_s[inside].mean()

@@ -13,6 +13,7 @@ import numpy as np
 from scipy import stats
 
 from service.airdata.pitot import calibrated_airspeed_from_impact_pressure
+from service.airdata.wind_triangle import direction_from_components, heading_coverage
 from service.domain.arrays import BoolArray, FloatArray, IntArray
 from service.domain.codes import Reason, ZeroOffsetSource
 from service.domain.results import (
@@ -249,7 +250,7 @@ def _result(
         true_airspeed_by_loiter_mps=tuple(
             loiter_means(blocks, blocks.mean(final.probe.speed_mps), len(loiters)).tolist()
         ),
-        heading_coverage_deg=_coverage(final),
+        heading_coverage_deg=heading_coverage(direction_from_components(*final.air_velocity_mps[:, :2].T)),
         airspeed_range_mps=_airspeed_range(blocks, probe, fitted),
         loiters_agree=consistency,
         gust_mps=float(posterior.weight @ posterior.intensity_mps),
@@ -322,13 +323,6 @@ def _winds(posterior: GustPosterior, state: State, loiters: Sequence[Loiter], bl
     return winds
 
 
-def _coverage(final: Residuals) -> float:
-    """360 degrees minus the largest gap between the air headings of all samples."""
-    air = final.air_velocity_mps
-    heading = np.sort(np.mod(np.degrees(np.arctan2(air[:, 1], air[:, 0])), 360.0))
-    return float(360.0 - np.diff(np.concatenate([heading, heading[:1] + 360.0])).max())
-
-
 def _airspeed_range(blocks: Blocks, probe: ProbeSpeed, fitted: State) -> tuple[float, float]:
     reading = blocks.mean(probe.reading_at(blocks.time_s, fitted.delay_s))
     impact = np.maximum(np.exp(fitted.log_scale) * (reading - fitted.zero_offset_pa), 0.0)
@@ -341,7 +335,7 @@ def _points(blocks: Blocks, final: Residuals) -> FittedPoints:
     return FittedPoints(
         time_s=blocks.mean(blocks.time_s),
         loiter=blocks.loiter.astype(np.float64),
-        heading_deg=np.mod(np.degrees(np.arctan2(direction[:, 1], direction[:, 0])), 360.0),
+        heading_deg=direction_from_components(direction[:, 0], direction[:, 1]),
         probe_true_airspeed_mps=blocks.mean(final.probe.speed_mps),
         wind_corrected_speed_mps=blocks.mean(np.linalg.norm(final.air_velocity_mps, axis=1)),
     )

@@ -1,6 +1,6 @@
 """Numbers that no flight holds: the search for faults neither raises, nor warns, nor answers with nonsense spans."""
 
-from dataclasses import dataclass
+from dataclasses import dataclass, field
 
 import numpy as np
 import pytest
@@ -85,6 +85,8 @@ def test_hostile_series(seed: int) -> None:
 @dataclass(frozen=True)
 class Fit:
     zero_offset_pa: float
+    pressure_scale: float = 1.0
+    covariance: FloatArray = field(default_factory=lambda: np.diag([1e-4, 1.0]))
     gps_delay_s: Estimate | None = None
 
 

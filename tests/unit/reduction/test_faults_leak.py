@@ -1,10 +1,11 @@
 """A leak after the fit: a step of the scale is found where it is, and gusts alone are not taken for one."""
 
-from dataclasses import dataclass, replace
+from dataclasses import dataclass, field, replace
 
 import numpy as np
 import pytest
 
+from service.domain.arrays import FloatArray
 from service.domain.codes import Direction, FaultKind
 from service.domain.results import AirDataSeries, Estimate, Fault, FittedPoints, Loiter
 from service.reduction.faults import find_scale_step
@@ -23,7 +24,9 @@ LOITERS = tuple(
 class Fit:
     """What the search asks of a fit."""
 
+    pressure_scale: float = 1.0
     zero_offset_pa: float = 0.0
+    covariance: FloatArray = field(default_factory=lambda: np.diag([1e-4, 1.0]))
     gps_delay_s: Estimate | None = None
 
 

@@ -3,10 +3,11 @@
 import numpy as np
 import pytest
 
+from service.airdata.wind_triangle import heading_coverage
 from service.domain.codes import Direction
 from service.domain.results import AirDataSeries
 from service.domain.settings import Window
-from service.reduction.loiters import LONGEST_LOITER_S, find_loiters, heading_coverage, joint_coverage
+from service.reduction.loiters import LONGEST_LOITER_S, find_loiters, joint_coverage
 from service.reduction.series import build_series
 from tests.unit.flown_circles import Flown, log_of
 from tests.unit.reduction.constructed import series_of

@@ -140,7 +140,7 @@ def _calibrate(log: DecodedLog, series: AirDataSeries, settings: Settings, fault
         remarks.insert(0, _contradiction(zero))
         zero = unknown_zero_offset()
     fit = _full_fit(log, series, loiters, zero, first)
-    step = find_scale_step(fit.points, loiters, fit)
+    step = find_scale_step(fit.points, loiters, fit, series=series, usable=usable)
     if step is not None:
         faults = _with_step(series, faults, step)
         remarks.insert(0, ReasonGiven(Reason.SCALE_CHANGED, step.message))

@@ -28,6 +28,9 @@ LEAST_INFORMATION = 0.01
 """Of the largest: a span that holds next to all points, or none, or all of one airspeed, tells no step."""
 
 
+MOST_ZERO_DOUBT = 100.0
+
+
 @dataclass(frozen=True, slots=True)
 class Levels:
     """Level of every span [i, j) of the (k,) points, from the moments of its steps."""
@@ -66,6 +69,8 @@ def levels_of_spans(points: FittedPoints, zero_doubt: float = 0.0) -> Levels:
     apart_s = np.abs(points.time_s[:, None] - points.time_s[None, :])
     usual = max(float(np.sqrt(np.mean(residual**2))), LEAST_SPEED_MPS)
     zero = zero_doubt / np.maximum(speed, LEAST_SPEED_MPS) / usual
+    # beyond a hundred residuals it is as good as unknown, and larger numbers only cost digits
+    zero *= min(1.0, MOST_ZERO_DOUBT / max(float(zero.max()), 1e-12))
     fixed = NOISE_SHARE * np.eye(residual.size) + np.outer(zero, zero)
     covariances = (
         geometry.covariance(length) * np.exp(-apart_s / life) + fixed for length in LENGTHS_M for life in LIVES_S

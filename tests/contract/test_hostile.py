@@ -70,7 +70,7 @@ def test_what_is_damaged_was_sound(client: FlaskClient, log_format: LogFormat) -
 
 @pytest.mark.parametrize(("seed", "number"), [(1, 518), (2, 3602), (3, 4370), (3, 4113)])
 def test_what_once_failed(client: FlaskClient, seed: int, number: int) -> None:
-    """A long answer, memory for a grid over the whole span, a filter wider than any memory, a covariance beyond digits."""
+    """A long answer, memory for a grid over the span, a filter wider than memory, a covariance beyond digits."""
     judge(send(client, make_case(seed, number)))
 
 

@@ -127,7 +127,8 @@ def _calibrate(log: DecodedLog, series: AirDataSeries, settings: Settings, fault
     remarks = _remarks(log, faults)
 
     def without_answer(reason: ReasonGiven) -> _Outcome:
-        return _Outcome(refused([reason, *remarks], zero.source), found, None, faults, zero)
+        others = [remark for remark in remarks if remark.code is not reason.code]
+        return _Outcome(refused([reason, *others], zero.source), found, None, faults, zero)
 
     reason = _holds_nothing(log, series, usable, faults, loiters)
     if reason is not None:

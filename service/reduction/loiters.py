@@ -12,7 +12,7 @@ from itertools import pairwise
 
 import numpy as np
 
-from service.airdata.wind_triangle import heading_coverage
+from service.airdata.headings import heading_coverage
 from service.domain.arrays import FloatArray
 from service.domain.codes import Direction
 from service.domain.results import AirDataSeries, Loiter

@@ -12,6 +12,8 @@ USUAL_RUNS = 6.0
 """A frozen run is this many times as long as 95 % of the flight's runs, and half as many times as the longest usual."""
 FEWEST_SAMPLES = 5
 SHORTEST_S = 3.0
+UNCHANGED_SHARE = 1e-3
+"""Of the dynamic pressure by GPS: the noise of any receiver moves it by several times as much."""
 
 
 def find_frozen(evidence: FlightEvidence) -> list[Finding]:
@@ -25,7 +27,7 @@ def find_frozen(evidence: FlightEvidence) -> list[Finding]:
     findings = []
     for index in np.flatnonzero(held.length >= fewest).tolist():
         first, last = flying[held.first[index]], flying[held.first[index] + held.length[index] - 1]
-        if time_s[last] - time_s[first] < SHORTEST_S:
+        if time_s[last] - time_s[first] < SHORTEST_S or _held_speed(evidence, int(first), int(last)):
             continue
         first, last = _to_the_ground(evidence.reading_pa, int(first), int(last))
         message = (
@@ -35,6 +37,14 @@ def find_frozen(evidence: FlightEvidence) -> list[Finding]:
         )
         findings.append(probe_finding(FaultKind.FROZEN, time_s, only(time_s.size, first, last + 1), message))
     return findings
+
+
+def _held_speed(evidence: FlightEvidence, first: int, last: int) -> bool:
+    """Whether by GPS, too, nothing changed: examples without noise hold their airspeed exactly, real air never."""
+    if not evidence.wind_known:
+        return False
+    expected = evidence.expected_pa[first : last + 1]
+    return bool(np.ptp(expected) < UNCHANGED_SHARE * np.max(np.abs(expected)))
 
 
 def _to_the_ground(reading: FloatArray, first: int, last: int) -> tuple[int, int]:

@@ -6,7 +6,8 @@ Kasa 1976), one per window; a window whose headings do not go round tells none.
 
 import numpy as np
 
-from service.airdata.wind_triangle import direction_from_components, heading_coverage
+from service.airdata.headings import heading_coverage
+from service.airdata.wind_triangle import direction_from_components
 from service.domain.arrays import FloatArray, IntArray
 from service.domain.results import AirDataSeries
 

@@ -10,10 +10,11 @@ from collections.abc import Sequence
 from dataclasses import dataclass
 
 import numpy as np
-from scipy import stats
+from scipy import special
 
+from service.airdata.headings import heading_coverage
 from service.airdata.pitot import calibrated_airspeed_from_impact_pressure
-from service.airdata.wind_triangle import direction_from_components, heading_coverage
+from service.airdata.wind_triangle import direction_from_components
 from service.domain.arrays import BoolArray, FloatArray, IntArray
 from service.domain.codes import Reason, ZeroOffsetSource
 from service.domain.results import (
@@ -200,7 +201,7 @@ def _loiters_agree(
     freedom = present.size - 1
     if freedom == 0:
         return 1.0, 1.0
-    chance = float(stats.chi2.sf(square, freedom))
+    chance = float(special.chdtrc(freedom, square))
     few = sum(loiters[index].turns for index in present.tolist()) < FEW_TURNS
     telling = UNLIKELY_SCATTER_OF_FEW if few else UNLIKELY_SCATTER
     return chance, max(square / freedom, 1.0) if chance < telling else 1.0

@@ -3,7 +3,7 @@
 import numpy as np
 import pytest
 
-from service.airdata.wind_triangle import heading_coverage
+from service.airdata.headings import heading_coverage
 from service.domain.codes import Direction
 from service.domain.results import AirDataSeries
 from service.domain.settings import Window

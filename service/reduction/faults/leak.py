@@ -22,14 +22,14 @@ from service.reduction.faults.reading_edges import Edges, edges_of_reading, extr
 from service.reduction.faults.scale_levels import levels_of_spans
 
 FEWEST_POINTS = 24
-ONE_EDGE = 5.5
-TWO_EDGES = 7.0
+ONE_EDGE = 5.8
+TWO_EDGES = 7.5
 """Deviations at which a step is told: of a leak that stays, and of one that closes again, which has more ways to be."""
 LEAST_LEVEL = 3.0
 """Deviations that the level alone must show."""
 LARGEST_DISAGREEMENT = 16.0
 """Chi-square of level and edges about their mean."""
-ONE_EDGE_ALONE = 7.0
+ONE_EDGE_ALONE = 6.5
 TWO_EDGES_ALONE = 9.0
 """Deviations at which edges are told where the level cannot tell, or is uncertain: gusts make edges of 4.5 at most."""
 CONFIRMING_SHARE = 0.25

@@ -34,7 +34,7 @@ def normal_estimate(value: float, deviation: float) -> Estimate:
     return Estimate(value, deviation, (value - reach, value + reach))
 
 
-def wind_estimate(north: Estimate, east: Estimate) -> WindEstimate:
+def wind_from_components(north: Estimate, east: Estimate) -> WindEstimate:
     """Speed and direction of the mean wind from its components; no direction where it may be any.
 
     Uncertainties are carried linearly along and across the wind; the speed's interval never falls below zero.

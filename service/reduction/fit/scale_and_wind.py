@@ -45,7 +45,7 @@ from service.reduction.fit.linear_model import (
     time_shares,
     wind_targets,
 )
-from service.reduction.fit.mixtures import mixture_estimate, normal_estimate, wind_estimate
+from service.reduction.fit.mixtures import mixture_estimate, normal_estimate, wind_from_components
 from service.reduction.fit.probe_speed import ProbeSpeed
 from service.reduction.fit.start import (
     DelayPrior,
@@ -320,7 +320,7 @@ def _winds(posterior: GustPosterior, state: State, loiters: Sequence[Loiter], bl
             )
             for axis in (0, 1)
         )
-        winds.append(wind_estimate(north, east))
+        winds.append(wind_from_components(north, east))
     return winds
 
 

@@ -5,7 +5,7 @@ import pytest
 from scipy import stats
 
 from service.domain.results import Estimate
-from service.reduction.fit.mixtures import mixture_estimate, mixture_quantile, normal_estimate, wind_estimate
+from service.reduction.fit.mixtures import mixture_estimate, mixture_quantile, normal_estimate, wind_from_components
 
 
 def test_one_normal_is_a_mixture() -> None:
@@ -28,7 +28,7 @@ def test_quantiles_and_moments_of_a_mixture() -> None:
 
 
 def test_direction_is_where_the_wind_comes_from() -> None:
-    wind = wind_estimate(normal_estimate(-2.5, 0.1), normal_estimate(4.0, 0.1))
+    wind = wind_from_components(normal_estimate(-2.5, 0.1), normal_estimate(4.0, 0.1))
     assert wind.speed_mps.value == pytest.approx(4.716991, abs=1e-6)
     assert wind.from_deg is not None
     assert wind.from_deg.value == pytest.approx(302.00538, abs=1e-5)
@@ -37,7 +37,7 @@ def test_direction_is_where_the_wind_comes_from() -> None:
 
 
 def test_uncertainty_along_and_across_the_wind() -> None:
-    wind = wind_estimate(normal_estimate(5.0, 0.3), normal_estimate(0.0, 0.1))
+    wind = wind_from_components(normal_estimate(5.0, 0.3), normal_estimate(0.0, 0.1))
     assert wind.speed_mps.standard_uncertainty == pytest.approx(0.3)
     assert wind.from_deg is not None
     assert wind.from_deg.standard_uncertainty == pytest.approx(np.degrees(0.1 / 5.0))
@@ -45,12 +45,12 @@ def test_uncertainty_along_and_across_the_wind() -> None:
 
 @pytest.mark.parametrize("north", [0.0, 0.1])
 def test_no_direction_of_a_wind_that_may_be_none(north: float) -> None:
-    wind = wind_estimate(normal_estimate(north, 0.2), normal_estimate(0.0, 0.2))
+    wind = wind_from_components(normal_estimate(north, 0.2), normal_estimate(0.0, 0.2))
     assert wind.from_deg is None
     assert wind.speed_mps.interval_95[0] == 0.0
 
 
 def test_the_speed_takes_over_the_wider_tails() -> None:
     wide = Estimate(6.0, 0.2, (5.4, 6.6))
-    wind = wind_estimate(wide, wide)
+    wind = wind_from_components(wide, wide)
     assert wind.speed_mps.interval_95[1] - wind.speed_mps.value == pytest.approx(3.0 * 0.2)

@@ -37,8 +37,8 @@ def test_three_circles_of_a_solar_aircraft() -> None:
     assert calibration.speed_scale is not None
     low, high = calibration.speed_scale.interval_95
     assert abs(calibration.speed_scale.value - 1.11) < 0.11
-    assert low < 1.14
-    assert high > 1.06
+    assert low < 1.06
+    assert high > 1.10
     assert high - low > 2.0 * calibration.accepted_half_width
     # wind towards north 0.3 to 0.5, east -4.4 to -4.6 m/s
     assert wind is not None
@@ -49,14 +49,15 @@ def test_three_circles_of_a_solar_aircraft() -> None:
 
 def test_a_log_cut_in_mid_message() -> None:
     answer = reduced("dawn/flight3/flight-truncated.ulg")
-    assert Reason.TRUNCATED in {reason.code for reason in answer.calibration.reasons} or answer.inputs.truncated
+    assert answer.inputs.truncated
+    assert Reason.TRUNCATED in {reason.code for reason in answer.calibration.reasons}
 
 
 def test_a_flight_that_stayed_on_the_ground() -> None:
     answer = reduced("dawn/flight1/flight.ulg")
     assert answer.calibration.verdict is Verdict.REFUSED
     # it rolls at 7 m/s for two minutes, always one way
-    assert {reason.code for reason in answer.calibration.reasons} <= {Reason.NOT_AIRBORNE, Reason.HEADING_COVERAGE}
+    assert {reason.code for reason in answer.calibration.reasons} == {Reason.NOT_AIRBORNE}
     assert answer.airspeed is not None
     assert np.all(answer.airspeed.flags & (Flag.UNCALIBRATED | Flag.MISSING) > 0)
 

@@ -228,7 +228,6 @@ def _result(
     )
     final = residuals(probe, blocks, fitted)
     scale_covariance = covariance[:2, :2].copy()
-    scale_covariance[0, 1] = scale_covariance[1, 0] = covariance[0, 1]
     scale_covariance[0, 0] = scale.standard_uncertainty**2
     winds = _winds(posterior, state, loiters, blocks)
     altitude = loiter_means(blocks, blocks.mean(blocks.altitude_m), len(loiters))

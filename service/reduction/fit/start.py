@@ -17,7 +17,6 @@ OUTLIER_DEVIATIONS = 6.0
 CLEAR_DELAY_SHARE = 0.7
 """A delay is taken from the data only where it brings the misfit below this share: gusts that push the aircraft mimic
 small delays."""
-SMALLEST_SPEED_MPS = 0.5
 
 
 @dataclass(frozen=True, slots=True)
@@ -81,14 +80,12 @@ def without_outliers(probe: ProbeSpeed, blocks: Blocks, state: State) -> Blocks:
     residual = residuals(probe, blocks, state).residual_mps
     if residual.size < 10:
         return blocks
-    block_of = np.repeat(np.arange(blocks.starts.size), blocks.counts.astype(np.int64))
-    middle = np.interp(np.arange(residual.size), np.arange(0, residual.size), _running_median(residual))
-    off = np.abs(residual - middle)
+    off = np.abs(residual - _running_median(residual))
     spread = 1.4826 * float(np.median(off)) + 0.02
     total = np.abs(residual - np.median(residual))
     far = total > OUTLIER_DEVIATIONS * (1.4826 * float(np.median(total)) + 0.05)
     good = (off < OUTLIER_DEVIATIONS * spread) & ~far
-    return blocks.keep(good) if np.bincount(block_of[good]).size and good.sum() >= 8 else blocks
+    return blocks.keep(good) if good.sum() >= 8 else blocks
 
 
 def clear_delay(probe: ProbeSpeed, blocks: Blocks, state: State, offset: OffsetPrior, delay: DelayPrior) -> DelayPrior:

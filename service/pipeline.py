@@ -237,7 +237,7 @@ def _full_fit(
 
 
 def _offset_prior(zero: ZeroOffset) -> OffsetPrior:
-    return OffsetPrior(zero.value_pa, zero.standard_uncertainty_pa)
+    return OffsetPrior(zero.value_pa, zero.standard_uncertainty_pa, zero.rectangular)
 
 
 def _delay_prior(delay: GpsDelay) -> DelayPrior:

@@ -1,9 +1,10 @@
 """What the service must beat: ordinary least squares, textbook interval and circle-to-circle scatter.
 
-Both fit speed scale and wind to a simulated flight's own samples, with the zero offset and delay that the service used.
+Both fit speed scale and wind to a simulated flight's own samples, with the zero offset and delay that the service used
+and the air temperature that it had: measured, or that of the standard atmosphere.
 """
 
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 
 import numpy as np
 from scipy import stats
@@ -12,6 +13,13 @@ from service.airdata.pitot import true_airspeed_from_impact_pressure
 from service.domain.arrays import FloatArray
 from service.domain.codes import Direction
 from service.domain.results import Reduction
+from tests.synthetic.air import (
+    GAS_CONSTANT,
+    GRAVITY,
+    LAPSE_K_PER_M,
+    SEA_LEVEL_PRESSURE_PA,
+    SEA_LEVEL_TEMPERATURE_K,
+)
 from tests.synthetic.truth import SimulatedFlight
 
 FEWEST_SAMPLES = 12
@@ -19,13 +27,14 @@ FEWEST_SAMPLES = 12
 
 @dataclass(frozen=True, slots=True)
 class Baseline:
-    """Relative error of the speed scale and half width of its 95 % interval; NaN where the method has no answer."""
+    """Relative error of the speed scale and half widths of its intervals; NaN where the method has no answer."""
 
     error: float
-    half_width: float
+    half_width_95: float
+    half_width_68: float
 
 
-NO_ANSWER = Baseline(float("nan"), float("nan"))
+NO_ANSWER = Baseline(float("nan"), float("nan"), float("nan"))
 
 
 def textbook(flight: SimulatedFlight, reduction: Reduction) -> Baseline:
@@ -35,7 +44,7 @@ def textbook(flight: SimulatedFlight, reduction: Reduction) -> Baseline:
     if samples is None:
         return NO_ANSWER
     scale, deviation = _least_squares(*samples)
-    return Baseline(scale / flight.truth.speed_scale - 1, 1.96 * deviation / scale)
+    return Baseline(scale / flight.truth.speed_scale - 1, 1.96 * deviation / scale, deviation / scale)
 
 
 def circle_by_circle(flight: SimulatedFlight, reduction: Reduction) -> Baseline:
@@ -55,10 +64,12 @@ def circle_by_circle(flight: SimulatedFlight, reduction: Reduction) -> Baseline:
     if len(scales) == 0:
         return NO_ANSWER
     mean = float(np.mean(scales))
+    error = mean / flight.truth.speed_scale - 1
     if len(scales) == 1:
-        return Baseline(mean / flight.truth.speed_scale - 1, float("nan"))
-    reach = float(stats.t.ppf(0.975, len(scales) - 1)) * float(np.std(scales, ddof=1)) / np.sqrt(len(scales))
-    return Baseline(mean / flight.truth.speed_scale - 1, reach / mean)
+        return replace(NO_ANSWER, error=error)
+    deviation = float(np.std(scales, ddof=1)) / np.sqrt(len(scales)) / mean
+    reach_95, reach_68 = (float(stats.t.isf(0.5 * (1 - level), len(scales) - 1)) for level in (0.95, 0.6827))
+    return Baseline(error, reach_95 * deviation, reach_68 * deviation)
 
 
 def _samples(
@@ -78,11 +89,19 @@ def _samples(
     known = np.isfinite(reading)
     at = time_s[inside] - (delay.value if delay else 0.0)
     pressure = np.interp(at, flight.truth.time_s, flight.truth.static_pressure_pa)
-    temperature = np.interp(at, flight.truth.time_s, flight.truth.air_temperature_k)
+    temperature = _temperature_k(flight, at, pressure)
     impact = np.maximum(np.interp(at, log.probe.time_s[known], reading[known]) - zero.value, 1e-3)
     speed = true_airspeed_from_impact_pressure(impact, pressure, temperature)
     velocity = np.column_stack([log.gps.velocity_north_mps[inside], log.gps.velocity_east_mps[inside]])
     return (speed, velocity) if speed.size >= FEWEST_SAMPLES else None
+
+
+def _temperature_k(flight: SimulatedFlight, time_s: FloatArray, pressure_pa: FloatArray) -> FloatArray:
+    measured = flight.log.temperature
+    if measured is not None:
+        return np.interp(time_s, measured.time_s, measured.air_temperature_k)
+    ratio = pressure_pa / SEA_LEVEL_PRESSURE_PA
+    return np.asarray(SEA_LEVEL_TEMPERATURE_K * ratio ** (GAS_CONSTANT * LAPSE_K_PER_M / GRAVITY))
 
 
 def _least_squares(speed: FloatArray, velocity: FloatArray) -> tuple[float, float]:

@@ -14,9 +14,9 @@ from service.domain.arrays import FloatArray
 VON_KARMAN_LENGTH = 1.339
 """Ratio of integral length to von Karman's length: Gamma(1/3) / (sqrt(pi) Gamma(5/6))."""
 
-SEPARATION_OF_AVERAGES = 0.5
-"""Smallest effective separation of gusts averaged over a length, as a share of it. The variance alone asks for 0.33;
-with 0.5 the intensity comes out right in simulated circles, whose blocks are averaged on a bend."""
+SEPARATION_OF_AVERAGES = 0.36
+"""Smallest effective separation of two gusts that are each averaged over a length, as a share of it. With it the
+difference of two adjoining averages has the variance that r^(2/3), by which f falls, gives it."""
 
 _TABLE_X = np.concatenate([[0.0], np.geomspace(1e-4, 30.0, 3000)])
 
@@ -39,18 +39,22 @@ _TABLE_ZF[0] = 0.0
 
 
 class GustGeometry:
-    """Separations and projections of points along a path, worked out once for many length scales.
+    """Points of a path with a direction at each: separations and projections, worked out once for many lengths.
 
     Parameters
     ----------
-    positions_m : (n, d) float
-        Positions in the air mass, d = 2 or 3. [m]
-    directions : (n, d) float
+    positions_m : (n, 3) float
+        Positions in the air mass. [m]
+    directions : (n, 3) float
         Unit vectors on which the gust is projected.
     averaging_m : float
         Length over which each point's gust is averaged along the path. [m] It enters as a smallest effective
         separation, which keeps the covariance positive: the kernel is a mixture of Gaussian kernels in r^2, and a
         constant added to r^2 only re-weights the mixture.
+    swept_m : (n,) float, optional
+        How far the field may have been carried along unseen by the time of each point (drift's standard uncertainty
+        times time). [m] Its differences are added to the separations in quadrature: the random sweeping of Kraichnan
+        (1964), by which a field meets itself less alike the later. Positive for the same reason.
     """
 
     def __init__(
@@ -58,35 +62,55 @@ class GustGeometry:
         positions_m: FloatArray,
         directions: FloatArray,
         averaging_m: float,
-        other_positions_m: FloatArray | None = None,
-        other_directions: FloatArray | None = None,
+        swept_m: FloatArray | None = None,
     ) -> None:
-        second = positions_m if other_positions_m is None else other_positions_m
-        facing = directions if other_directions is None else other_directions
-        dimensions = positions_m.shape[1]
-        difference = [positions_m[:, None, k] - second[None, :, k] for k in range(dimensions)]
-        square = sum((d * d for d in difference), np.zeros((len(positions_m), len(second))))
-        self._distance = np.sqrt(square + (SEPARATION_OF_AVERAGES * averaging_m) ** 2)
-        inverse_square = 1.0 / np.maximum(square, 1e-12)
-        along_first = sum((d * directions[:, None, k] for k, d in enumerate(difference)), np.zeros_like(square))
-        along_second = sum((d * facing[None, :, k] for k, d in enumerate(difference)), np.zeros_like(square))
-        self._longitudinal = along_first * along_second * inverse_square
-        self._cosine = directions @ facing.T
+        self._directions = directions
+        apart = positions_m.T[:, :, None] - positions_m.T[:, None, :]
+        square = np.einsum("kij,kij->ij", apart, apart)
+        least = np.square(SEPARATION_OF_AVERAGES * averaging_m)
+        if swept_m is not None:
+            least = least + np.square(np.subtract.outer(swept_m, swept_m))
+        self._distance = np.sqrt(square + least)
         self._share = square / np.maximum(self._distance**2, 1e-12)
-        self._known: dict[float, FloatArray] = {}
+        self._toward = apart / np.sqrt(np.maximum(square, 1e-12))
+        self._along = np.einsum("kij,ik->ij", self._toward, directions)
+        self._longitudinal = -self._along * self._along.T
+        self._cosine = directions @ directions.T
+        self._known: dict[float, tuple[FloatArray, FloatArray]] = {}
 
     def covariance(self, length_m: float) -> FloatArray:
-        """(n, n) covariance of the projected gusts for unit intensity and integral length `length_m`.
+        """(n, n) covariance of the projected gusts for unit intensity and integral length `length_m`."""
+        across, excess = self._kernel(length_m)
+        return np.asarray(across * self._cosine - excess * self._longitudinal)
 
-        Kept for the next call with the same length: treat it as read-only.
+    def mean_gusts(self, length_m: float, weights: FloatArray) -> tuple[FloatArray, FloatArray]:
+        """Weighted means of the north and the east gust over the path, for unit intensity.
+
+        Parameters
+        ----------
+        weights : (n, m) float
+            Of m means.
+
+        Returns
+        -------
+        cross : (n, m, 2) covariance of the projected gusts with the means, north and east.
+        own : (m, 2) variance of the means.
         """
-        if length_m not in self._known:
-            self._known[length_m] = self._covariance(length_m)
-        return self._known[length_m]
+        across, excess = self._kernel(length_m)
+        level = across @ weights
+        cross, own = np.empty((*weights.shape, 2)), np.empty((weights.shape[1], 2))
+        for axis in (0, 1):
+            toward = self._toward[axis]
+            cross[:, :, axis] = self._directions[:, axis, None] * level - (excess * self._along * toward) @ weights
+            own[:, axis] = np.einsum("nm,nm->m", weights, level - (excess * toward**2) @ weights)
+        return cross, own
 
-    def _covariance(self, length_m: float) -> FloatArray:
-        z = self._distance / (VON_KARMAN_LENGTH * length_m)
-        f = np.interp(z, _TABLE_X, _TABLE_F, right=0.0)
-        half_zf = 0.5 * self._share * np.interp(z, _TABLE_X, _TABLE_ZF, right=0.0)
-        # f - g = -(r/2) f'
-        return np.asarray((f + half_zf) * self._cosine - half_zf * self._longitudinal)
+    def _kernel(self, length_m: float) -> tuple[FloatArray, FloatArray]:
+        """g and g - f by separation, (n, n) each; kept for the next call with the same length."""
+        if length_m not in self._known:
+            z = self._distance / (VON_KARMAN_LENGTH * length_m)
+            f = np.interp(z, _TABLE_X, _TABLE_F, right=0.0)
+            # g - f = (r/2) f'
+            excess = 0.5 * self._share * np.interp(z, _TABLE_X, _TABLE_ZF, right=0.0)
+            self._known[length_m] = (f + excess, excess)
+        return self._known[length_m]

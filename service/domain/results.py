@@ -235,13 +235,13 @@ def nan_array(length: int) -> FloatArray:
 class ZeroOffset:
     """What is known of the zero before the fit: a prior with its source.
 
-    `wind_bias` is set for ground readings: they may hold wind that blows into the probe, always one way.
+    `rectangular`: all values within the square root of 3 standard uncertainties are alike, none beyond.
     """
 
     value_pa: float
     standard_uncertainty_pa: float
     source: ZeroOffsetSource
-    wind_biased: bool
+    rectangular: bool = False
 
 
 @dataclass(frozen=True, slots=True)

@@ -27,6 +27,7 @@ positive half of a normal distribution, `c = sqrt(pi/32)` makes the result exact
 Samples that are missing or faulty have no uncertainty (NaN): the model above does not hold for them.
 """
 
+import math
 from typing import Final
 
 import numpy as np
@@ -48,10 +49,17 @@ EXTRAPOLATED_SCALE_UNCERTAINTY: Final = 0.05 / float(np.log(1.6))
 NEAR_ZERO: Final = float(np.sqrt(np.pi / 32.0))
 """The constant c above: E[V^2] = V(u)^2 sqrt(2/pi) for a half-normal pressure of scale u."""
 SLOW_STEP_S: Final = 0.2
-"""Sampling slower than this lets the air change as much between two samples as the noise does."""
+"""Sampling slower than this, third differences have nothing smooth left to remove."""
 INERTIAL_LAG_RATIO: Final = float(2.0 ** (2.0 / 3.0))
 """Growth of the squared velocity difference from one lag to two in turbulence (Kolmogorov's two-thirds law)."""
-FEWEST_FOR_NOISE: Final = 8
+TYPICAL_NOISE_PA: Final = 0.7
+"""Assumed where the readings do not clearly tell of more (common practice: 0.5 to 1 Pa)."""
+CLEAR: Final = 2.0
+"""Standard errors by which the growth of the differences, and the noise, must stand out to be used."""
+MEDIAN_ERROR: Final = 3.5
+"""Relative standard error of a variance taken from the median absolute deviation, times the root of the count: 2.33 for
+independent values, 1.5 times that for third differences, which are not."""
+FEWEST_FOR_NOISE: Final = 12
 LARGEST_READING_PA: Final = 1e6
 """Ten atmospheres: whatever reads this is no probe, and its numbers may be too large to compute with."""
 
@@ -104,9 +112,10 @@ def corrected_series(
 def reading_noise(reading_pa: FloatArray, step_s: float) -> float:
     """Standard deviation of the sensor's noise, told from the air's own changes by their pace. [Pa]
 
-    At a fast sampling the third difference removes what is smooth. At a slow one turbulence changes the reading from
-    one sample to the next as well; there the squared difference is followed back from two lags and one to none, by
-    the two-thirds law. Both are robust (median), and blind to a value that a recorder merely repeats.
+    At a fast sampling third differences remove what is smooth, at a slow one first differences must do. Turbulence
+    changes the reading from one sample to the next as well: the squared differences are followed back from two lags
+    and one to none, by the two-thirds law. Where that does not clearly tell the noise, a typical one is assumed. All is
+    robust (median), and blind to a value that a recorder merely repeats.
 
     Parameters
     ----------
@@ -120,11 +129,26 @@ def reading_noise(reading_pa: FloatArray, step_s: float) -> float:
     fresh = reading_pa[np.concatenate([[True], np.diff(reading_pa) != 0.0])] if reading_pa.size else reading_pa
     if fresh.size < FEWEST_FOR_NOISE:
         return 0.0
-    if step_s <= SLOW_STEP_S:
-        return _spread(np.diff(fresh, 3)) / float(np.sqrt(20.0))
-    one_lag = 0.5 * _spread(fresh[1:] - fresh[:-1]) ** 2
-    two_lags = 0.5 * _spread(fresh[2:] - fresh[:-2]) ** 2
-    return float(np.sqrt(max(one_lag - (two_lags - one_lag) / (INERTIAL_LAG_RATIO - 1.0), 0.0)))
+    order = 3 if step_s <= SLOW_STEP_S else 1
+    one_lag, two_lags = (_noise_variance(fresh, order, lag) for lag in (1, 2))
+    unsure = MEDIAN_ERROR / fresh.size**0.5
+    growth = two_lags - one_lag
+    if growth < CLEAR * unsure * math.hypot(one_lag, two_lags):
+        return math.sqrt(one_lag)
+    share = 1.0 / (INERTIAL_LAG_RATIO - 1.0)
+    variance = one_lag - share * growth
+    error = unsure * math.hypot((1 + share) * one_lag, share * two_lags)
+    if variance < CLEAR * error:
+        variance = max(variance - error, min(TYPICAL_NOISE_PA**2, one_lag))
+    return math.sqrt(variance)
+
+
+def _noise_variance(readings_pa: FloatArray, order: int, lag: int) -> float:
+    """Variance of the noise if nothing else made the differences of that order at that lag. [Pa^2]"""
+    differences = readings_pa
+    for _ in range(order):
+        differences = differences[lag:] - differences[:-lag]
+    return _spread(differences) ** 2 / math.comb(2 * order, order)
 
 
 def _spread(differences: FloatArray) -> float:

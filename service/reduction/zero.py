@@ -20,8 +20,8 @@ from service.domain.spans import runs
 
 COMPENSATED_PRIOR_PA = 1.0
 """A probe whose zero was taken before flight (method notes: N(0, 1 Pa))."""
-RAW_PRIOR_PA = (60.0, 45.0)
-"""Value and uncertainty of a raw sensor's zero: 5 to 50 Pa is common practice, 60 to 120 Pa were seen."""
+RAW_PRIOR_PA = (90.0, 30.0 / 3.0**0.5)
+"""Value and standard uncertainty of a raw sensor's zero: anything from 60 to 120 Pa (method notes)."""
 UNKNOWN_PRIOR_PA = 150.0
 """Beyond the largest raw zero seen."""
 GIVEN_PA = 0.5
@@ -89,18 +89,19 @@ def zero_offset(
     """What is known of the zero: given before ground before prior."""
     if settings.zero_offset_pa is not None:
         uncertainty = GIVEN_PA if settings.zero_offset_uncertainty_pa is None else settings.zero_offset_uncertainty_pa
-        return ZeroOffset(settings.zero_offset_pa, max(uncertainty, 1e-3), ZeroOffsetSource.GIVEN, False)
+        return ZeroOffset(settings.zero_offset_pa, max(uncertainty, 1e-3), ZeroOffsetSource.GIVEN)
     if rests:
         value, uncertainty = _from_rest(rests, wind)
-        return ZeroOffset(value, uncertainty, ZeroOffsetSource.GROUND, True)
+        return ZeroOffset(value, uncertainty, ZeroOffsetSource.GROUND)
     value, prior = (0.0, COMPENSATED_PRIOR_PA) if series.compensated_zero else RAW_PRIOR_PA
     uncertainty = prior if settings.zero_offset_uncertainty_pa is None else settings.zero_offset_uncertainty_pa
-    return ZeroOffset(value, max(uncertainty, 1e-3), ZeroOffsetSource.PRIOR, False)
+    rectangular = not series.compensated_zero and settings.zero_offset_uncertainty_pa is None
+    return ZeroOffset(value, max(uncertainty, 1e-3), ZeroOffsetSource.PRIOR, rectangular)
 
 
 def unknown_zero_offset() -> ZeroOffset:
     """Next to nothing known: for a flight whose own speeds contradict what was assumed."""
-    return ZeroOffset(0.0, UNKNOWN_PRIOR_PA, ZeroOffsetSource.PRIOR, False)
+    return ZeroOffset(0.0, UNKNOWN_PRIOR_PA, ZeroOffsetSource.PRIOR)
 
 
 def _heading_at_rest(attitude: AttitudeSamples | None, time_s: FloatArray) -> float:

@@ -19,7 +19,7 @@ from enum import StrEnum
 import numpy as np
 import numpy.typing as npt
 from scipy.special import gamma, kv
-from scipy.stats import beta
+from scipy.stats import beta, qmc
 
 from service.domain.arrays import FloatArray
 
@@ -93,22 +93,25 @@ def lateral_correlation(spectrum: Spectrum, separation_m: FloatArray, length_m: 
     return np.asarray(along - 0.5 * scaled * slope)
 
 
-def _unit_vectors(rng: np.random.Generator, count: int) -> FloatArray:
-    """(3, count), uniform on the sphere."""
-    raw = rng.standard_normal((3, count))
-    return np.asarray(raw / np.linalg.norm(raw, axis=0))
+def _directions(height: FloatArray, azimuth: FloatArray, turned: FloatArray) -> tuple[FloatArray, FloatArray]:
+    """From uniform deviates: unit vectors (3, count) all over the sphere, and one across each, all about it."""
+    along = 2.0 * height - 1.0
+    level, angle, about = np.sqrt(1.0 - along**2), 2.0 * np.pi * azimuth, 2.0 * np.pi * turned
+    direction = np.array([level * np.cos(angle), level * np.sin(angle), along])
+    first = np.array([-np.sin(angle), np.cos(angle), np.zeros_like(angle)])
+    second = np.cross(direction, first, axis=0)
+    return direction, np.cos(about) * first + np.sin(about) * second
 
 
 def _wave_numbers(
-    spectrum: Spectrum, length_m: float, rng: np.random.Generator, count: int
+    spectrum: Spectrum, length_m: float, energy_deviates: FloatArray, length_deviates: FloatArray
 ) -> tuple[FloatArray, FloatArray]:
     """Wave numbers [rad/m] and each one's share of the energy, both (count,); shares sum to 1 on average."""
     tail = _TAIL[spectrum]
-    half = count // 2
-    # stratified: one draw per slice of equal probability
-    by_energy = beta.ppf((np.arange(half) + rng.random(half)) / half, _ENERGY_EXPONENT, tail)
-    rest = count - half
-    by_length = beta.ppf((np.arange(rest) + rng.random(rest)) / rest, _LONG_WAVE_EXPONENT, tail)
+    half, rest = energy_deviates.size, length_deviates.size
+    count = half + rest
+    by_energy = beta.ppf(energy_deviates, _ENERGY_EXPONENT, tail)
+    by_length = beta.ppf(length_deviates, _LONG_WAVE_EXPONENT, tail)
     # a draw of exactly 1 would be an infinite wave number
     share = np.clip(np.concatenate((by_energy, by_length)), 1e-12, 1.0 - 1e-12)
     # both densities share the factor (1 - t)^(tail - 1), which cancels in the weight
@@ -128,10 +131,11 @@ def _isotropic_modes(
     spectrum: Spectrum, sigma_mps: float, length_m: float, rng: np.random.Generator, count: int
 ) -> tuple[FloatArray, FloatArray]:
     """Wave vectors [rad/m] and velocity amplitudes [m/s], both (3, count)."""
-    number, share = _wave_numbers(spectrum, length_m, rng, count)
-    direction = _unit_vectors(rng, count)
-    across = np.cross(direction, _unit_vectors(rng, count), axis=0)
-    across /= np.linalg.norm(across, axis=0)
+    half = count // 2
+    # spread evenly over wave numbers and directions together, so that no field is far from isotropic by chance
+    energy, length = (qmc.Halton(4, rng=rng).random(part).T for part in (half, count - half))
+    number, share = _wave_numbers(spectrum, length_m, energy[0], length[0])
+    direction, across = _directions(*np.hstack((energy[1:], length[1:])))
     # a Rayleigh amplitude with a uniform phase is a Gaussian cosine and sine; mean square of the sum is 3 sigma^2
     size = rng.rayleigh(1.0, count) * np.sqrt(3.0 * share) * sigma_mps
     return direction * number, across * size

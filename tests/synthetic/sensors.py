@@ -21,14 +21,16 @@ from service.domain.log import (
 )
 from service.domain.settings import Settings
 from tests.synthetic.air import Atmosphere, calibrated_airspeed_mps, impact_pressure_pa
-from tests.synthetic.flight import STEP_S, FlightHistory, FlightPlan
-from tests.synthetic.truth import SimulatedFlight, TrueLoiter, Truth
+from tests.synthetic.flight import STEP_S, FlightHistory, FlightPlan, wind_factor
+from tests.synthetic.truth import SimulatedFlight, TrueLoiter, TrueNoise, Truth
 
 TRUTH_STRIDE = 2
 """The truth is kept at every second step: ten a second."""
 EARTH_RADIUS_M = 6371000.0
 TEMPERATURE_UNCERTAINTY_K = 0.5
 """Of the outside-air sensor, when there is one: its bias is drawn from it."""
+GPS_SLOW_TIME_S = 20.0
+"""Time constant of the coloured noise of GPS velocity."""
 TAIL_WIND_SHARE = -0.1
 """What the probe feels of the dynamic pressure of wind from behind."""
 
@@ -54,7 +56,7 @@ class Gps:
     delay_s: float
     noise_mps: float = 0.07
     slow_noise_mps: float = 0.02
-    """Coloured, with a time constant of 20 s."""
+    """Coloured, with a time constant of `GPS_SLOW_TIME_S`."""
     rate_hz: float = 5.0
     components: bool = True
     """False: speed over ground and track only, so no vertical velocity."""
@@ -193,7 +195,7 @@ def _gps(history: FlightHistory, atmosphere: Atmosphere, gps: Gps, rng: np.rando
 
 def _gps_noise(gps: Gps, count: int, rng: np.random.Generator) -> FloatArray:
     """(3, count) white plus slow noise. [m/s]"""
-    keep = float(np.exp(-1.0 / (20.0 * gps.rate_hz)))
+    keep = float(np.exp(-1.0 / (GPS_SLOW_TIME_S * gps.rate_hz)))
     drive = rng.normal(0.0, gps.slow_noise_mps * np.sqrt(1.0 - keep**2), (3, count))
     drive[:, 0] = rng.normal(0.0, gps.slow_noise_mps, 3)
     return np.asarray(lfilter([1.0], [1.0, -keep], drive, axis=1) + rng.normal(0.0, gps.noise_mps, (3, count)))
@@ -234,12 +236,15 @@ def _truth(
 ) -> Truth:
     kept = slice(None, None, TRUTH_STRIDE)
     velocity = history.air_velocity_mps
+    undisturbed = _undisturbed_wind(plan, history)
     return Truth(
         pressure_scale=sensors.probe.pressure_scale,
         zero_offset_pa=sensors.probe.zero_offset_pa,
         gps_delay_s=sensors.gps.delay_s,
         sigma_mps=plan.gust.sigma_mps,
         length_m=plan.gust.length_m,
+        gust=plan.gust,
+        noise=TrueNoise(sensors.probe.noise_pa, sensors.gps.noise_mps, sensors.gps.slow_noise_mps, GPS_SLOW_TIME_S),
         mean_wind_north_mps=plan.wind.north_mps,
         mean_wind_east_mps=plan.wind.east_mps,
         loiters=_loiters(plan, history),
@@ -250,14 +255,26 @@ def _truth(
         air_north_mps=history.local_air_mps[0, kept],
         air_east_mps=history.local_air_mps[1, kept],
         air_down_mps=history.local_air_mps[2, kept],
+        undisturbed_north_mps=undisturbed[0, kept],
+        undisturbed_east_mps=undisturbed[1, kept],
+        ground_velocity_mps=history.velocity_mps[:, kept],
         true_airspeed_mps=air.true_airspeed_mps[kept],
         heading_deg=np.degrees(np.arctan2(velocity[1], velocity[0]))[kept] % 360.0,
+        fuselage_heading_deg=np.degrees(history.heading_rad[kept]) % 360.0,
         height_m=history.height_m[kept],
         load_factor=history.load_factor[kept],
         static_pressure_pa=air.pressure_pa[kept],
         air_temperature_k=air.temperature_k[kept],
         on_ground=history.on_ground[kept],
     )
+
+
+def _undisturbed_wind(plan: FlightPlan, history: FlightHistory) -> FloatArray:
+    """(2, n) mean wind north and east at every step. [m/s]"""
+    wind = plan.wind
+    at_100_m = np.array([[wind.north_mps], [wind.east_mps]])
+    drift = np.array([[wind.drift_north_mps2], [wind.drift_east_mps2]])
+    return np.asarray((at_100_m + drift * history.time_s) * wind_factor(history.height_m, wind.exponent))
 
 
 def _loiters(plan: FlightPlan, history: FlightHistory) -> tuple[TrueLoiter, ...]:

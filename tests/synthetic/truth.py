@@ -9,6 +9,7 @@ from service.domain.arrays import BoolArray, FloatArray
 from service.domain.codes import FaultKind
 from service.domain.log import DecodedLog
 from service.domain.settings import Settings
+from tests.synthetic.gust_field import GustModel
 
 
 @dataclass(frozen=True, slots=True)
@@ -33,6 +34,18 @@ class TrueFault:
 
 
 @dataclass(frozen=True, slots=True)
+class TrueNoise:
+    """Standard deviations of the sensors' own noise, white but for the slow part of the GPS."""
+
+    probe_pa: float
+    gps_mps: float
+    """Of a horizontal component of velocity."""
+    gps_slow_mps: float
+    gps_slow_time_s: float
+    """In which its correlation falls to 1/e."""
+
+
+@dataclass(frozen=True, slots=True)
 class Truth:
     """Arrays without a word about their times are (k,), at `time_s`, ten a second."""
 
@@ -41,6 +54,9 @@ class Truth:
     gps_delay_s: float
     sigma_mps: float
     length_m: float
+    gust: GustModel
+    """All that the gust field was drawn from."""
+    noise: TrueNoise
     mean_wind_north_mps: float
     mean_wind_east_mps: float
     """Mean wind at 100 m at the start, without gusts."""
@@ -54,9 +70,15 @@ class Truth:
     air_east_mps: FloatArray
     """Velocity of the air at the aircraft: mean wind and gust."""
     air_down_mps: FloatArray
+    undisturbed_north_mps: FloatArray
+    undisturbed_east_mps: FloatArray
+    """Mean wind at the aircraft's height and time: the velocity of the air without its gusts."""
+    ground_velocity_mps: FloatArray
+    """(3, k) north, east, down."""
     true_airspeed_mps: FloatArray
     heading_deg: FloatArray
     """Of the air velocity."""
+    fuselage_heading_deg: FloatArray
     height_m: FloatArray
     """Above the ground."""
     load_factor: FloatArray

@@ -1,53 +1,28 @@
-"""Drift of the gust field over a spot, where the wind is light.
+"""Drift of the gust field over the ground, and how far it is known.
 
-The field drifts with the wind of a wide neighbourhood; circles over one spot see that wind plus the mean gust there.
-In a fresh wind the difference does not matter; in a light one it decides whether the next circle meets the same gusts
-again, and the repetition itself tells: the drift that makes the residuals likeliest is taken.
+The field drifts with the mean wind of a wide neighbourhood. What least squares finds is that wind plus the mean gust
+over the loiter, and it matters where a path meets the same air again: circles or squares that close in the air mass, or
+over one spot in light wind. So the drift is the wind of the linear model, freed of the mean gust by generalised least
+squares in a typical field; and what remains unknown of it blurs the field from one pass to the next (`sweeping`).
 """
 
-import numpy as np
-from scipy import optimize
-
 from service.airdata.gusts import GustGeometry
-from service.domain.arrays import FloatArray
 from service.domain.results import AirDataSeries
 from service.reduction.fit.blocks import Blocks
-from service.reduction.fit.gust_posterior import LinearModel, field_evidence, likeliest_field
-from service.reduction.fit.linear_model import air_path, directions
+from service.reduction.fit.gust_posterior import Columns, LinearModel, typical_mean
+from service.reduction.fit.linear_model import gust_geometry
 from service.reduction.fit.start import Residuals, State
 
-LIGHT_WIND_MPS = 3.0
-"""Above it a field of some hundred metres is blown through between one circle and the next but one."""
-DRIFT_DOUBT = 1.1
-"""Standard deviation of the drift about the local mean wind, in units of the residual's root mean square."""
-FIRST_STEP_MPS = 0.25
-TRIALS = 40
+SWEEPING = 1.5
+"""Standard uncertainty of the drift over the residuals' root mean square. The mean gust over a loiter, which least
+squares takes for wind, is about as large; twice or half of it serves as well in simulated flights."""
 
 
-def field_drift(
+def drifting_field(
     series: AirDataSeries, blocks: Blocks, state: State, now: Residuals, model: LinearModel, residual_rms_mps: float
-) -> FloatArray:
-    """(number of loiters, 2) velocity with which the gust field moves over the ground, by loiter. [m/s]"""
-    if float(np.hypot(*state.wind_mps.mean(axis=0))) > LIGHT_WIND_MPS:
-        return state.wind_mps
-    direction = directions(blocks.mean(directions(now.air_velocity_mps)))
-    averaging_m = blocks.seconds * float(np.median(now.probe.speed_mps))
-    doubt = DRIFT_DOUBT * residual_rms_mps
-
-    def geometry(shift: FloatArray) -> GustGeometry:
-        return GustGeometry(air_path(series, blocks, state.wind_mps + shift), direction, averaging_m)
-
-    intensity, noise = likeliest_field(model, geometry(np.zeros(2)), residual_rms_mps)
-
-    def unlikeliness(shift: FloatArray) -> float:
-        prior = 0.5 * float(shift @ shift) / doubt**2
-        return prior - field_evidence(model, geometry(shift), intensity, noise)
-
-    simplex = FIRST_STEP_MPS * np.array([[0.0, 0.0], [1.0, 0.0], [0.0, 1.0]])
-    found = optimize.minimize(
-        unlikeliness,
-        np.zeros(2),
-        method="Nelder-Mead",
-        options={"initial_simplex": simplex, "maxfev": TRIALS, "xatol": 0.01, "fatol": 0.05},
-    )
-    return np.asarray(state.wind_mps + found.x)
+) -> GustGeometry:
+    """The path in the gust field."""
+    sweeping = SWEEPING * residual_rms_mps
+    first = gust_geometry(series, blocks, now, state.wind_mps, sweeping)
+    shift = typical_mean(model, first, residual_rms_mps)[Columns(len(state.wind_mps)).winds]
+    return gust_geometry(series, blocks, now, state.wind_mps + shift.reshape(-1, 2), sweeping)

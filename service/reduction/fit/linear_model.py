@@ -1,7 +1,6 @@
 """The fit, linear about a state: residuals of the blocks, smoothed slopes, priors, and the path in the air mass."""
 
 from collections.abc import Sequence
-from dataclasses import dataclass
 
 import numpy as np
 
@@ -9,39 +8,16 @@ from service.airdata.gusts import GustGeometry
 from service.domain.arrays import FloatArray
 from service.domain.results import AirDataSeries, Loiter
 from service.reduction.fit.blocks import Blocks
-from service.reduction.fit.gust_posterior import LinearModel, PathGeometry, Target
+from service.reduction.fit.gust_posterior import Columns, LinearModel, Targets
 from service.reduction.fit.probe_speed import ProbeSpeed
 from service.reduction.fit.start import DelayPrior, OffsetPrior, Residuals, State
 
-WIND_CHANGE_MPS = 1.5
+WIND_CHANGE_SHARE, LEAST_WIND_CHANGE_MPS = 0.25, 0.3
 WIND_CHANGE_TIME_S = 1800.0
 WIND_CHANGE_HEIGHT_M = 400.0
 """Winds of two loiters differ by about 0.75 m/s after four minutes and 1.2 m/s over 150 m of height (one sigma)."""
-WIND_DRIFT_MPS_PER_MIN = 0.25
+WIND_DRIFT_MPS_PER_MIN = 0.12
 UNKNOWN_WIND_MPS = 50.0
-
-
-@dataclass(frozen=True, slots=True)
-class Columns:
-    """Where each parameter stands in d: ln K, zero offset, delay, winds by loiter, drifts by loiter [m/s per min]."""
-
-    loiters: int
-
-    @property
-    def count(self) -> int:
-        return 3 + 4 * self.loiters
-
-    def wind(self, axis: int) -> slice:
-        """Wind of every loiter along one axis (0 north, 1 east)."""
-        return slice(3 + axis, 3 + 2 * self.loiters, 2)
-
-    @property
-    def winds(self) -> slice:
-        return slice(3, 3 + 2 * self.loiters)
-
-    @property
-    def drifts(self) -> slice:
-        return slice(3 + 2 * self.loiters, self.count)
 
 
 def linear_model(
@@ -70,7 +46,7 @@ def linear_model(
     precision = np.zeros((columns.count, columns.count))
     precision[1, 1] = offset.standard_uncertainty_pa**-2
     precision[2, 2] = delay.standard_uncertainty_s**-2
-    precision[columns.winds, columns.winds] = _wind_precision(blocks, columns.loiters)
+    precision[columns.winds, columns.winds] = _wind_precision(blocks, state.wind_mps)
     precision[columns.drifts, columns.drifts] = np.eye(2 * columns.loiters) / WIND_DRIFT_MPS_PER_MIN**2
     # the residual at the true parameters is the gust: observed = -slopes d + eta
     noise = float(np.median(blocks.counts)) / blocks.counts
@@ -100,50 +76,42 @@ def time_shares(blocks: Blocks, loiters: Sequence[Loiter]) -> FloatArray:
     return np.array(lasting) / sum(lasting)
 
 
-def wind_targets(blocks: Blocks, loiters: Sequence[Loiter]) -> list[Target]:
-    """Wind over path and time, north and east: of all used loiters by their time, then of each loiter."""
+def wind_targets(blocks: Blocks, loiters: Sequence[Loiter]) -> Targets:
+    """Wind over path and time: of all used loiters by their time, then of each loiter."""
     columns = Columns(len(loiters))
-    targets = []
-    for shares in (time_shares(blocks, loiters), *np.eye(len(loiters))):
-        weights = np.zeros(blocks.loiter.size)
-        for index in np.flatnonzero(shares).tolist():
-            inside = blocks.loiter == index
-            weights[inside] = shares[index] * blocks.counts[inside] / max(blocks.counts[inside].sum(), 1.0)
-        for axis in (0, 1):
-            coefficients = np.zeros(columns.count)
-            coefficients[columns.wind(axis)] = shares
-            targets.append(Target(coefficients, weights, axis))
-    return targets
+    share_of_each = np.vstack([time_shares(blocks, loiters), np.eye(len(loiters))])
+    of_loiter = np.zeros((blocks.loiter.size, len(loiters)))
+    of_loiter[np.arange(blocks.loiter.size), blocks.loiter] = blocks.counts
+    of_loiter /= np.maximum(of_loiter.sum(axis=0), 1.0)
+    coefficients = np.zeros((len(share_of_each), 2, columns.count))
+    for axis in (0, 1):
+        coefficients[:, axis, columns.wind(axis)] = share_of_each
+    return Targets(coefficients, of_loiter @ share_of_each.T)
 
 
-def air_path(series: AirDataSeries, blocks: Blocks, wind_mps: FloatArray) -> FloatArray:
-    """(k, 3) positions in the air mass at the blocks' mean times, for winds (number of loiters, 2). [m]"""
+def gust_geometry(
+    series: AirDataSeries, blocks: Blocks, now: Residuals, drift_mps: FloatArray, sweeping_mps: float
+) -> GustGeometry:
+    """The blocks' path in a gust field that drifts with (number of loiters, 2) `drift_mps`.
+
+    `sweeping_mps` is the standard uncertainty of that drift.
+    """
     time_s = series.gps_time_s
-    middle = loiter_means(blocks, blocks.mean(blocks.time_s), wind_mps.shape[0])
+    at = blocks.mean(blocks.time_s)
+    middle = loiter_means(blocks, at, drift_mps.shape[0])
     order = np.argsort(middle)
     path = np.zeros((time_s.size, 3))
     for axis, velocity in enumerate((series.velocity_north_mps, series.velocity_east_mps, series.velocity_down_mps)):
-        wind = np.interp(time_s, middle[order], wind_mps[order, axis]) if axis < 2 else 0.0
-        air = velocity - wind
+        drift = np.interp(time_s, middle[order], drift_mps[order, axis]) if axis < 2 else 0.0
+        air = velocity - drift
         path[1:, axis] = np.cumsum(0.5 * (air[1:] + air[:-1]) * np.diff(time_s))
     if np.isfinite(series.gps_altitude_m).all():
         path[:, 2] = -series.gps_altitude_m
-    at = blocks.mean(blocks.time_s)
-    return np.column_stack([np.interp(at, time_s, path[:, axis]) for axis in range(3)])
-
-
-def path_geometry(series: AirDataSeries, blocks: Blocks, now: Residuals, wind_mps: FloatArray) -> PathGeometry:
-    """The blocks' path if the air mass drifts with `wind_mps` (number of loiters, 2)."""
-    direction = directions(blocks.mean(directions(now.air_velocity_mps)))
-    averaging_m = blocks.seconds * float(np.median(now.probe.speed_mps))
-    north, east = (np.tile(axis, (direction.shape[0], 1)) for axis in np.eye(3)[:2])
-    path = air_path(series, blocks, wind_mps)
-    return PathGeometry(
-        gust=GustGeometry(path, direction, averaging_m),
-        to_north=GustGeometry(path, direction, averaging_m, path, north),
-        to_east=GustGeometry(path, direction, averaging_m, path, east),
-        north=GustGeometry(path, north, averaging_m),
-        east=GustGeometry(path, east, averaging_m),
+    return GustGeometry(
+        np.column_stack([np.interp(at, time_s, path[:, axis]) for axis in range(3)]),
+        directions(blocks.mean(directions(now.air_velocity_mps))),
+        blocks.seconds * float(np.median(now.probe.speed_mps)),
+        sweeping_mps * at,
     )
 
 
@@ -177,11 +145,13 @@ def _minutes_in_loiter(blocks: Blocks) -> FloatArray:
     return np.asarray((time_s - middle[blocks.loiter]) / 60.0)
 
 
-def _wind_precision(blocks: Blocks, loiters: int) -> FloatArray:
-    """Winds of loiters near in time and height are alike; their common level is free."""
+def _wind_precision(blocks: Blocks, wind_mps: FloatArray) -> FloatArray:
+    """Winds of loiters near in time and height are alike, the more so where it is light; their common level is free."""
+    loiters = len(wind_mps)
     time_s = loiter_means(blocks, blocks.mean(blocks.time_s), loiters)
     height = np.nan_to_num(loiter_means(blocks, blocks.mean(blocks.altitude_m), loiters))
     later, higher = (np.abs(values[:, None] - values) for values in (time_s, height))
     alike = np.exp(-later / WIND_CHANGE_TIME_S - higher / WIND_CHANGE_HEIGHT_M)
-    covariance = WIND_CHANGE_MPS**2 * alike + 1e-6 * np.eye(loiters) + UNKNOWN_WIND_MPS**2
-    return np.kron(np.linalg.inv(covariance), np.eye(2))
+    change = np.hypot(LEAST_WIND_CHANGE_MPS, WIND_CHANGE_SHARE * float(np.hypot(*wind_mps.mean(axis=0))))
+    covariance = change**2 * alike + 1e-6 * np.eye(loiters) + UNKNOWN_WIND_MPS**2
+    return np.asarray(np.kron(np.linalg.inv(covariance), np.eye(2)), dtype=np.float64)

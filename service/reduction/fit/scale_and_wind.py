@@ -12,6 +12,7 @@ from dataclasses import dataclass
 import numpy as np
 from scipy import special
 
+from service.airdata.gusts import GustGeometry
 from service.airdata.headings import heading_coverage
 from service.airdata.pitot import calibrated_airspeed_from_impact_pressure
 from service.airdata.wind_triangle import direction_from_components
@@ -28,20 +29,18 @@ from service.domain.results import (
     WindEstimate,
 )
 from service.reduction.fit.blocks import Blocks, gather_blocks
-from service.reduction.fit.drift import field_drift
+from service.reduction.fit.branches import FIXED_ZERO_PA, Branch, Joined, joined, zeros_to_try
+from service.reduction.fit.drift import drifting_field
 from service.reduction.fit.gust_posterior import (
     GustPosterior,
     LinearModel,
-    PathGeometry,
     disagreement,
     gust_posterior,
 )
 from service.reduction.fit.linear_model import (
-    Columns,
     directions,
     linear_model,
     loiter_means,
-    path_geometry,
     time_shares,
     wind_targets,
 )
@@ -74,14 +73,13 @@ CROSS_GUST_EFFECT, CROSS_GUST_DOUBT = 0.27, 0.54
 It is ((1 - 2 c_v) + r (1 - 2 c_w)) / 2 for the shares c of the sideways and vertical gusts that the aircraft follows
 and the ratio r = 0.8 of vertical to horizontal gust variance. Guidance that holds a circle and a height follows little
 of the slow gusts that carry most of the variance, a free aircraft nearly all: c = 0.35 +- 0.3."""
-OFFSET_STEPS = 41
-"""Offsets into which each node is split, over four standard deviations to either side."""
-UNLIKELY_SCATTER, UNLIKELY_SCATTER_OF_FEW = 0.1, 0.5
-"""Chance below which the scatter of the loiters' scales widens the interval; so few turns hardly tell the gusts' own
-intensity and length, and any scatter beyond the expected counts."""
-FEW_TURNS = 6.0
+UNLIKELY_SCATTER = 0.03
+"""Chance below which the scatter of the loiters' scales widens the interval."""
 GPS_DRIFT_MPS = 0.007
 """What is left of a receiver's slow velocity error after minutes: about 0.01 kt (check values, section h)."""
+COUPLING = 1.08
+"""The aircraft answers the gusts that it measures and does not fly on rails through them: in simulated flights the
+errors of the wind were by so much larger than along the same paths through fresh fields."""
 FITTED_ZERO_SHARE = 0.5
 """The zero counts as fitted where the data halve its prior uncertainty."""
 
@@ -164,20 +162,42 @@ def fit_scale_and_wind(
     """The full fit about a preliminary one. `loiters` as given to that one."""
     probe, blocks = preliminary.probe, preliminary.blocks
     delay = clear_delay(probe, blocks, preliminary.state, offset, delay)
-    state = start_state(probe, blocks, offset, delay) or preliminary.state
+
+    def branch(prior: OffsetPrior, weight: float = 1.0) -> Branch:
+        state = start_state(probe, blocks, prior, delay) or preliminary.state
+        return _branch(series, loiters, preliminary, state, prior, delay, weight)
+
+    branches = [branch(offset)]
+    signal_pa = float(np.median(probe.reading_at(blocks.time_s, branches[0].state.delay_s)))
+    zeros = zeros_to_try(offset, branches[0], signal_pa)
+    if zeros:
+        branches = [branch(OffsetPrior(zero_pa, FIXED_ZERO_PA), weight) for zero_pa, weight in zeros]
+    return _result(series, loiters, preliminary, joined(branches), offset, offset_source)
+
+
+def _branch(
+    series: AirDataSeries,
+    loiters: Sequence[Loiter],
+    preliminary: PreliminaryFit,
+    state: State,
+    offset: OffsetPrior,
+    delay: DelayPrior,
+    weight: float,
+) -> Branch:
+    """The posterior about one state."""
+    probe, blocks = preliminary.probe, preliminary.blocks
     now = residuals(probe, blocks, state)
     model = linear_model(blocks, probe, state, now, offset, delay)
     rms = max(float(np.sqrt(np.mean(model.observed**2))), RESIDUAL_FLOOR_MPS)
-    drift = field_drift(series, blocks, state, now, model, rms)
-    path = path_geometry(series, blocks, now, drift)
-    posterior = gust_posterior(model, path, wind_targets(blocks, loiters), rms)
-    consistency, widening = _loiters_agree(blocks, loiters, model, path, posterior)
-    scale = _log_scale(series, blocks, probe, state, now, posterior, widening)
-    return _result(series, loiters, preliminary, state, scale, consistency, posterior, offset, offset_source)
+    gust = drifting_field(series, blocks, state, now, model, rms)
+    posterior = gust_posterior(model, gust, wind_targets(blocks, loiters), rms)
+    consistency, widening = _loiters_agree(blocks, model, gust, posterior)
+    shares = time_shares(blocks, loiters)
+    return Branch(weight, state, posterior, shares, float(np.median(now.probe.speed_mps)), consistency, widening)
 
 
 def _loiters_agree(
-    blocks: Blocks, loiters: Sequence[Loiter], model: LinearModel, path: PathGeometry, posterior: GustPosterior
+    blocks: Blocks, model: LinearModel, gust: GustGeometry, posterior: GustPosterior
 ) -> tuple[float, float]:
     """Chance that loiters of one scale scatter as these do, and the variance factor for those that scatter too much.
 
@@ -193,7 +213,7 @@ def _loiters_agree(
     square = disagreement(
         model,
         extra,
-        path.gust,
+        gust,
         float(posterior.intensity_mps[best]),
         float(posterior.noise_mps[best]),
         float(posterior.length_m[best]),
@@ -202,45 +222,41 @@ def _loiters_agree(
     if freedom == 0:
         return 1.0, 1.0
     chance = float(special.chdtrc(freedom, square))
-    few = sum(loiters[index].turns for index in present.tolist()) < FEW_TURNS
-    telling = UNLIKELY_SCATTER_OF_FEW if few else UNLIKELY_SCATTER
-    return chance, max(square / freedom, 1.0) if chance < telling else 1.0
+    return chance, max(square / freedom, 1.0) if chance < UNLIKELY_SCATTER else 1.0
 
 
 def _result(
     series: AirDataSeries,
     loiters: Sequence[Loiter],
     preliminary: PreliminaryFit,
-    state: State,
-    scale: Estimate,
-    consistency: float,
-    posterior: GustPosterior,
+    found: Joined,
     offset: OffsetPrior,
     offset_source: ZeroOffsetSource,
 ) -> FitResult:
     probe, blocks = preliminary.probe, preliminary.blocks
-    columns, expected, covariance = Columns(len(loiters)), posterior.expected(), posterior.spread()
+    scale = _log_scale(series, found)
+    zero_pa, zero_deviation_pa = found.moments(found.zero_offset_pa, found.covariance[:, 1, 1])
+    delay_s, delay_deviation_s = found.moments(found.delay_s, found.covariance[:, 2, 2])
     fitted = State(
-        float(np.clip(state.log_scale + scale.value, -LARGEST_LOG_SCALE, LARGEST_LOG_SCALE)),
-        state.zero_offset_pa + float(expected[1]),
-        state.delay_s + float(expected[2]),
-        state.wind_mps + expected[columns.winds].reshape(-1, 2),
+        float(np.clip(scale.value, -LARGEST_LOG_SCALE, LARGEST_LOG_SCALE)),
+        zero_pa,
+        delay_s,
+        np.tensordot(found.weight, found.wind_mps, axes=1),
     )
     final = residuals(probe, blocks, fitted)
-    scale_covariance = covariance[:2, :2].copy()
-    scale_covariance[0, 0] = scale.standard_uncertainty**2
-    winds = _winds(posterior, state, loiters, blocks)
+    common = found.common_variance(found.log_scale, found.zero_offset_pa, found.covariance[:, 0, 1])
+    winds = _winds(found)
     altitude = loiter_means(blocks, blocks.mean(blocks.altitude_m), len(loiters))
-    zero_found = covariance[1, 1] < (FITTED_ZERO_SHARE * offset.standard_uncertainty_pa) ** 2
+    zero_found = zero_deviation_pa < FITTED_ZERO_SHARE * offset.standard_uncertainty_pa
     return FitResult(
-        converged=bool(np.isfinite(expected).all() and np.isfinite(covariance).all()),
+        converged=bool(np.isfinite(found.log_scale).all() and np.isfinite(found.covariance).all()),
         pressure_scale=float(np.exp(fitted.log_scale)),
-        zero_offset_pa=fitted.zero_offset_pa,
-        covariance=scale_covariance,
+        zero_offset_pa=zero_pa,
+        covariance=np.array([[scale.standard_uncertainty**2, common], [common, zero_deviation_pa**2]]),
         log_density_uncertainty=log_density_uncertainty(series),
         coverage_factor_95=(scale.interval_95[1] - scale.interval_95[0]) / (2 * scale.standard_uncertainty),
         zero_offset_source=ZeroOffsetSource.FITTED if zero_found else offset_source,
-        gps_delay_s=normal_estimate(fitted.delay_s, float(np.sqrt(covariance[2, 2]))),
+        gps_delay_s=normal_estimate(delay_s, delay_deviation_s),
         wind=winds[0],
         wind_by_loiter=tuple(
             LoiterWind(index, float(altitude[index]), winds[1 + index])
@@ -252,8 +268,8 @@ def _result(
         ),
         heading_coverage_deg=heading_coverage(direction_from_components(*final.air_velocity_mps[:, :2].T)),
         airspeed_range_mps=_airspeed_range(blocks, probe, fitted),
-        loiters_agree=consistency,
-        gust_mps=float(posterior.weight @ posterior.intensity_mps),
+        loiters_agree=found.consistency,
+        gust_mps=float(found.weight @ found.intensity_mps),
         residual_rms_mps=float(np.sqrt(np.mean(blocks.mean(final.residual_mps) ** 2))),
         points=_points(blocks, final),
     )
@@ -266,61 +282,27 @@ def log_density_uncertainty(series: AirDataSeries) -> float:
     return float(np.hypot(pressure, temperature))
 
 
-def _log_scale(
-    series: AirDataSeries,
-    blocks: Blocks,
-    probe: ProbeSpeed,
-    state: State,
-    now: Residuals,
-    posterior: GustPosterior,
-    widening: float,
-) -> Estimate:
-    """Change of ln K against the state: gusts, zero offset (not linear where it is large), cross gusts, density."""
+def _log_scale(series: AirDataSeries, found: Joined) -> Estimate:
+    """ln K: gusts, zero offset, cross gusts, density."""
     # cross gusts raise the mean residual; unheeded, ln K would come out lower by 2 / V of that
-    per_share = 2 * (posterior.intensity_mps / max(float(np.median(now.probe.speed_mps)), 1.0)) ** 2
-    mean = posterior.mean[:, 0] + CROSS_GUST_EFFECT * per_share
-    variance = widening * posterior.covariance[:, 0, 0] + (CROSS_GUST_DOUBT * per_share) ** 2
+    per_share = 2 * (found.intensity_mps / max(found.airspeed_mps, 1.0)) ** 2
+    variance = found.widening * found.covariance[:, 0, 0] + (CROSS_GUST_DOUBT * per_share) ** 2
     variance += log_density_uncertainty(series) ** 2
-    signal = float(np.median(probe.reading_at(blocks.time_s, state.delay_s))) - state.zero_offset_pa
-    return _with_offset_curvature(posterior, mean, variance, signal)
+    return mixture_estimate(found.weight, found.log_scale + CROSS_GUST_EFFECT * per_share, np.sqrt(variance))
 
 
-def _with_offset_curvature(
-    posterior: GustPosterior, mean: FloatArray, variance: FloatArray, signal_pa: float
-) -> Estimate:
-    """ln K bends with the zero offset as -ln(signal - offset): each node is split by its offset."""
-    abscissas = np.linspace(-4.0, 4.0, OFFSET_STEPS)
-    shares = np.exp(-0.5 * abscissas**2)
-    shares = shares / shares.sum()
-    deviation = np.sqrt(posterior.covariance[:, 1, 1])
-    slope = posterior.covariance[:, 0, 1] / posterior.covariance[:, 1, 1]
-    step = deviation[:, None] * abscissas
-    # no more than nine tenths of the signal can be offset, or there would be no airspeed
-    left = np.maximum(signal_pa - posterior.mean[:, 1, None] - step, 0.1 * abs(signal_pa))
-    centre = np.maximum(signal_pa - posterior.mean[:, 1, None], 0.1 * abs(signal_pa))
-    bend = -np.log(left / centre) - step / centre
-    means = mean[:, None] + slope[:, None] * step + bend
-    deviations = np.sqrt(np.maximum(variance - slope**2 * posterior.covariance[:, 1, 1], 1e-12))
-    weights = (posterior.weight[:, None] * shares).ravel()
-    return mixture_estimate(weights, means.ravel(), np.repeat(deviations, abscissas.size))
-
-
-def _winds(posterior: GustPosterior, state: State, loiters: Sequence[Loiter], blocks: Blocks) -> list[WindEstimate]:
+def _winds(found: Joined) -> list[WindEstimate]:
     """Of all used loiters, then of each."""
-    levels = [time_shares(blocks, loiters) @ state.wind_mps, *state.wind_mps]
-    deviations = np.sqrt(np.maximum(posterior.target_variance, 0.0) + GPS_DRIFT_MPS**2)
-    winds = []
-    for index, level in enumerate(levels):
-        north, east = (
-            mixture_estimate(
-                posterior.weight,
-                posterior.target_mean[:, 2 * index + axis] + level[axis],
-                deviations[:, 2 * index + axis],
+    deviations = np.sqrt(COUPLING**2 * found.mean_wind_variance + GPS_DRIFT_MPS**2)
+    return [
+        wind_from_components(
+            *(
+                mixture_estimate(found.weight, found.mean_wind_mps[:, index, axis], deviations[:, index, axis])
+                for axis in (0, 1)
             )
-            for axis in (0, 1)
         )
-        winds.append(wind_from_components(north, east))
-    return winds
+        for index in range(deviations.shape[1])
+    ]
 
 
 def _airspeed_range(blocks: Blocks, probe: ProbeSpeed, fitted: State) -> tuple[float, float]:

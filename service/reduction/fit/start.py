@@ -33,6 +33,13 @@ class OffsetPrior:
 
     value_pa: float
     standard_uncertainty_pa: float
+    rectangular: bool = False
+    """All values within the square root of 3 standard uncertainties are alike, none beyond (GUM 4.3.7)."""
+
+    @property
+    def reach_pa(self) -> float:
+        """Half width of a rectangular one."""
+        return float(self.standard_uncertainty_pa * 3.0**0.5)
 
 
 @dataclass(frozen=True, slots=True)

@@ -5,6 +5,7 @@ import pytest
 from scipy import integrate
 
 from service.airdata.gusts import VON_KARMAN_LENGTH, GustGeometry, von_karman_correlation
+from service.domain.arrays import FloatArray
 
 RNG = np.random.default_rng(1)
 
@@ -28,6 +29,10 @@ def test_the_derivative_is_that_of_the_correlation() -> None:
     z, step = np.array([0.05, 0.3, 1.0, 3.0]), 1e-5
     rise = (von_karman_correlation(z + step)[0] - von_karman_correlation(z - step)[0]) / (2.0 * step)
     assert von_karman_correlation(z)[1] == pytest.approx(rise, rel=1e-6)
+
+
+def longitudinal(separation_m: FloatArray, length_m: float) -> FloatArray:
+    return von_karman_correlation(separation_m / (VON_KARMAN_LENGTH * length_m))[0]
 
 
 def _pair(distance_m: float, direction: tuple[float, float, float]) -> float:
@@ -77,9 +82,35 @@ def test_a_turned_path_has_the_same_covariance() -> None:
     assert turned == pytest.approx(plain, abs=1e-9)
 
 
-def test_between_two_sets_of_points() -> None:
+def test_mean_gusts_are_sums_of_the_covariances() -> None:
     positions = RNG.uniform(-200.0, 200.0, (6, 3))
-    north, east = np.tile([1.0, 0.0, 0.0], (6, 1)), np.tile([0.0, 1.0, 0.0], (6, 1))
-    cross = GustGeometry(positions, north, 0.0, positions, east).covariance(200.0)
-    assert cross == pytest.approx(GustGeometry(positions, east, 0.0, positions, north).covariance(200.0).T, abs=1e-12)
-    assert np.diag(cross) == pytest.approx(0.0, abs=1e-9)
+    directions = RNG.normal(0.0, 1.0, (6, 3))
+    directions /= np.linalg.norm(directions, axis=1)[:, None]
+    weights = RNG.random((6, 2))
+    cross, own = GustGeometry(positions, directions, 10.0).mean_gusts(200.0, weights)
+    for axis in (0, 1):
+        facing = np.tile(np.eye(3)[axis], (6, 1))
+        both = GustGeometry(np.vstack([positions] * 2), np.vstack([directions, facing]), 10.0).covariance(200.0)
+        assert cross[:, :, axis] == pytest.approx(both[:6, 6:] @ weights, abs=1e-12)
+        assert own[:, axis] == pytest.approx(np.einsum("im,ij,jm->m", weights, both[6:, 6:], weights), abs=1e-12)
+
+
+def test_adjoining_averages_differ_as_much_as_their_integrals() -> None:
+    # second derivation: the covariance of two averages over adjoining stretches of one straight path, by quadrature
+    length_m, stretch_m, fine = 200.0, 25.0, 400
+    inside = (np.arange(fine) + 0.5) / fine * stretch_m
+    points = np.concatenate([inside, inside + stretch_m])
+    f = longitudinal(np.abs(points[:, None] - points[None, :]), length_m)
+    first, second = slice(0, fine), slice(fine, None)
+    exact = 2.0 * (f[first, first].mean() - f[first, second].mean())
+    positions = np.array([[0.0, 0.0, 0.0], [stretch_m, 0.0, 0.0]])
+    covariance = GustGeometry(positions, np.tile([1.0, 0.0, 0.0], (2, 1)), stretch_m).covariance(length_m)
+    assert 2.0 * (covariance[0, 0] - covariance[0, 1]) == pytest.approx(exact, rel=0.03)
+
+
+def test_a_field_that_is_swept_is_another_one_later() -> None:
+    # Gaussian kernels in r^2 average to longer ones over normal drifts: less is left of the covariance, never more
+    positions, directions = np.zeros((3, 3)), np.tile([1.0, 0.0, 0.0], (3, 1))
+    left = GustGeometry(positions, directions, 0.0, np.array([0.0, 50.0, 200.0])).covariance(200.0)[0]
+    assert left[0] == pytest.approx(1.0, abs=1e-9)
+    assert 1.0 > left[1] > left[2] > 0.0

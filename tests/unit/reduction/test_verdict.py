@@ -20,7 +20,7 @@ from service.reduction.verdict import (
 from tests.unit.reduction.constructed import fit_of, series_of
 
 CIRCLES = (Loiter(0.0, 180.0, 6.0, Direction.LEFT, 360.0, 17.0, True),)
-GROUND = ZeroOffset(3.0, 0.2, ZeroOffsetSource.GROUND, True)
+GROUND = ZeroOffset(3.0, 0.2, ZeroOffsetSource.GROUND)
 
 
 def fit(log_deviation: float = 0.01, zero_deviation_pa: float = 0.2, **changes: Any) -> FitResult:

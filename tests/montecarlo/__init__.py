@@ -1,0 +1,1 @@
+"""The campaign over the families of simulated flights: `python -m tests.montecarlo`."""

@@ -136,19 +136,21 @@ def _calibrate(log: DecodedLog, series: AirDataSeries, settings: Settings, fault
     first = _first_fit(series, usable, loiters, zero)
     if isinstance(first, ReasonGiven):
         return without_answer(first)
-    zero = zero_offset(series, settings.probe, rests, _wind_aloft(series, first))
-    if contradicts_zero(first, _offset_prior(zero), _delay_prior(prior_delay())):
-        remarks.insert(0, _contradiction(zero))
-        zero = unknown_zero_offset()
+    assumed = zero_offset(series, settings.probe, rests, _wind_aloft(series, first))
+    zero, contradiction = _zero_in_view_of(first, assumed)
     fit = _full_fit(log, series, loiters, zero, first)
     step = find_scale_step(fit.points, loiters, fit, series=series, usable=usable)
     if step is not None:
         faults = _with_step(series, faults, step)
         remarks.insert(0, ReasonGiven(Reason.SCALE_CHANGED, step.message))
-        first = _first_fit(series, usable & ~faults.probe_faulty, loiters, zero)
+        first = _first_fit(series, usable & ~faults.probe_faulty, loiters, assumed)
         if isinstance(first, ReasonGiven):
             return without_answer(first)
+        # what looked like a wrong zero may have been the leak: judge the zero again without it
+        zero, contradiction = _zero_in_view_of(first, assumed)
         fit = _full_fit(log, series, loiters, zero, first)
+    if contradiction is not None:
+        remarks.insert(0, contradiction)
     refusal = refusal_of(fit)
     if refusal is not None:
         return without_answer(refusal)
@@ -212,6 +214,13 @@ def _fault_reason(faults: FaultReport) -> ReasonGiven:
     code = Reason.STATIC_FAULT if static_only else Reason.PROBE_FAULT
     longest = max(faults.faults, key=lambda fault: fault.end_s - fault.start_s, default=None)
     return ReasonGiven(code, longest.message if longest else "The probe gave no usable reading in flight.")
+
+
+def _zero_in_view_of(first: PreliminaryFit, assumed: ZeroOffset) -> tuple[ZeroOffset, ReasonGiven | None]:
+    """The zero to fit with, and what to say where the speeds flown contradict the one assumed."""
+    if contradicts_zero(first, _offset_prior(assumed), _delay_prior(prior_delay())):
+        return unknown_zero_offset(), _contradiction(assumed)
+    return assumed, None
 
 
 def _contradiction(zero: ZeroOffset) -> ReasonGiven:

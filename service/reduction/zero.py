@@ -36,6 +36,8 @@ PROFILE_DOUBT = 0.4
 """Relative standard uncertainty of the ground wind that the profile foretells."""
 LEAST_TURBULENCE = 0.15
 """Turbulence intensity near the ground hardly falls below this (common practice)."""
+SHARE_OF_CEILING = 2.0 / 3.0
+"""Where the profile foretells more than the reading's unrest allows: the upper part of what it allows."""
 HEADING_UNKNOWN_SHARE = 0.25
 """Mean of max(cos, 0)^2 over all headings."""
 HEADING_UNKNOWN_SPREAD = 0.35
@@ -148,5 +150,6 @@ def _wind_bias(rest: RestReading, wind: WindAloft | None) -> tuple[float, float]
     # gusts of at least LEAST_TURBULENCE would have moved the reading by twice that share of the pressure
     ceiling = rest.scatter_pa / (2 * LEAST_TURBULENCE)
     if bias + doubt > ceiling:
-        return 0.5 * min(bias, ceiling) if bias > ceiling else bias, min(doubt, max(0.5 * ceiling, 0.02))
+        value = SHARE_OF_CEILING * ceiling if bias > ceiling else bias
+        return value, min(doubt, max(0.5 * ceiling, 0.02))
     return bias, doubt

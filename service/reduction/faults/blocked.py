@@ -3,13 +3,15 @@
 This is the plain case, where the zero is known. A raw sensor that was never at rest is left to `no_airflow`.
 """
 
+from dataclasses import replace
+
 import numpy as np
 from scipy.ndimage import median_filter, uniform_filter1d
 
 from service.domain.arrays import BoolArray, FloatArray, IntArray
 from service.domain.codes import FaultKind
 from service.reduction.faults.evidence import FlightEvidence
-from service.reduction.faults.finding import Finding, episodes, only, probe_finding
+from service.reduction.faults.finding import Finding, episodes, only, probe_finding, widened
 
 NOTHING_SHARE = 0.1
 """Of the dynamic pressure by GPS: half of what the least sensitive probe (pressure scale 5) reads."""
@@ -24,6 +26,18 @@ LONGEST_SINKING_S = 12.0
 """A drained line loses its pressure within seconds,"""
 LONGEST_RETURN_S = 2.0
 """and has it back at once when the hole is free."""
+
+
+SPOILED_BESIDE_S = 1.0
+"""On either side of what is told: a hole that closes or opens makes a sample or two that are neither."""
+
+
+def no_airflow_finding(
+    kind: FaultKind, time_s: FloatArray, samples: BoolArray, airborne: BoolArray, message: str
+) -> Finding:
+    """A span without airflow (n,), which spoils the flown samples beside it as well."""
+    finding = probe_finding(kind, time_s, samples, message)
+    return replace(finding, probe_samples=samples | (widened(time_s, samples, SPOILED_BESIDE_S) & airborne))
 
 
 def blocked_message(start_s: float, end_s: float) -> str:
@@ -52,7 +66,8 @@ def find_blocked(evidence: FlightEvidence) -> list[Finding]:
         first, last = _with_sinking(time_s[where], ratio < flowing, first, last)
         start, end = int(where[first]), int(where[last - 1])
         message = blocked_message(time_s[start], time_s[end])
-        findings.append(probe_finding(FaultKind.BLOCKED, time_s, only(time_s.size, start, end + 1), message))
+        span = only(time_s.size, start, end + 1)
+        findings.append(no_airflow_finding(FaultKind.BLOCKED, time_s, span, evidence.airborne, message))
     return findings
 
 

@@ -1,11 +1,13 @@
 """One-second means of reading and static pressure, with what sample noise alone would leave in them.
 
 A mean of a second smooths the sensor's noise and keeps the gusts: what scatters in it more than noise explains is air.
+Both pressures are smoothed over the same samples, else the beginning of a climb would look like a gust.
 """
 
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 
 import numpy as np
+from scipy.ndimage import convolve1d, uniform_filter1d
 
 from service.airdata.constants import STANDARD_GRAVITY_MPS2
 from service.domain.arrays import BoolArray, FloatArray, IntArray
@@ -15,7 +17,9 @@ from service.reduction.faults.held_values import rounding_step
 BLOCK_S = 1.0
 FEWEST_TO_TELL_NOISE = 4
 """Samples in a block from which their own differences tell the noise."""
-STATIC_HALF_WINDOW_S = 1.0
+STATIC_SMOOTHING_S = 0.5
+"""Of the static pressure: short, so that reading and static pressure stay smoothed alike where a climb begins."""
+SMOOTHING = np.array([0.25, 0.5, 0.25])
 MOST_EMPTY = 10
 """More than a window may miss."""
 MEDIAN_OF_CHI_SQUARE = 0.4549
@@ -36,8 +40,11 @@ class SecondBlocks:
     noise_pa2: FloatArray
     """Variance that sample noise leaves in each mean; NaN where the samples are too few to tell."""
     static_pa: FloatArray
-    """Smoothed static pressure; NaN where unknown."""
+    """Means of the static pressure, less that of the start, at the times of the same samples; NaN where unknown."""
     static_noise_pa2: float
+    """Variance that sample noise leaves in them."""
+    noise_overlap: float
+    """Correlation of the noise of neighbours."""
     airborne: BoolArray
     """Every sample of the block is in the air."""
     expected_pa: FloatArray
@@ -54,16 +61,41 @@ def second_blocks(evidence: FlightEvidence) -> SecondBlocks:
     count, total = _sums(start, known.astype(np.float64)), _sums(start, np.where(known, evidence.reading_pa, 0.0))
     enough = count >= max(0.5 * usual, 1.0)
     size = np.maximum(np.diff(start), 1)
-    middle_s = time_s[np.minimum((start[:-1] + start[1:]) // 2, time_s.size - 1)]
-    static_pa, static_noise_pa2 = _static(evidence, middle_s)
-    return SecondBlocks(
+    static = _static(evidence)
+    static_pa = _sums(start, np.where(known, np.interp(time_s, static.time_s, static.pressure_pa), 0.0))
+    static_span_s = max((usual - 1) * evidence.interval_s, STATIC_SMOOTHING_S)
+    own = max(static_span_s / static.interval_s, 1.0)
+    tells_noise = usual >= FEWEST_TO_TELL_NOISE
+    blocks = SecondBlocks(
         start=start,
         reading_pa=np.where(enough, total / np.maximum(count, 1.0), np.nan),
-        noise_pa2=_noise(evidence, start) / size if usual >= FEWEST_TO_TELL_NOISE else np.full(size.size, np.nan),
-        static_pa=static_pa,
-        static_noise_pa2=static_noise_pa2,
+        noise_pa2=_noise(evidence, start) / size if tells_noise else np.full(size.size, np.nan),
+        static_pa=np.where(enough, static_pa / np.maximum(count, 1.0), np.nan),
+        static_noise_pa2=static.noise_pa2 / own,
+        noise_overlap=0.0,
         airborne=_sums(start, (~evidence.moving).astype(np.float64)) == 0,
         expected_pa=_sums(start, np.nan_to_num(evidence.expected_pa)) / size,
+    )
+    return _smoothed(blocks) if tells_noise else blocks
+
+
+def _smoothed(blocks: SecondBlocks) -> SecondBlocks:
+    """Each block with half the weight of either neighbour's: the static sensor's noise hides gusts in calm air."""
+    known = np.isfinite(blocks.reading_pa)
+    weight = convolve1d(known.astype(np.float64), SMOOTHING, mode="constant")
+
+    def mean(values: FloatArray) -> FloatArray:
+        total = convolve1d(np.where(known, values, 0.0), SMOOTHING, mode="constant")
+        return np.where(known, total / np.maximum(weight, SMOOTHING[1]), np.nan)
+
+    left = float(np.sum(SMOOTHING**2))
+    return replace(
+        blocks,
+        reading_pa=mean(blocks.reading_pa),
+        noise_pa2=left * blocks.noise_pa2,
+        static_pa=mean(blocks.static_pa),
+        static_noise_pa2=left * blocks.static_noise_pa2,
+        noise_overlap=float(np.sum(SMOOTHING[1:] * SMOOTHING[:-1])) / left,
     )
 
 
@@ -90,8 +122,18 @@ def _noise(evidence: FlightEvidence, start: IntArray) -> FloatArray:
     return total / np.maximum(count, 1.0)
 
 
-def _static(evidence: FlightEvidence, middle_s: FloatArray) -> tuple[FloatArray, float]:
-    """Static pressure about each time, mean of two seconds, and the variance that sample noise leaves in it."""
+@dataclass(frozen=True, slots=True)
+class _Static:
+    """Static pressure, less its first, on its own times, smoothed; NaN, at one time, where it is unknown."""
+
+    time_s: FloatArray
+    pressure_pa: FloatArray
+    interval_s: float
+    noise_pa2: float
+    """Variance of one sample before smoothing."""
+
+
+def _static(evidence: FlightEvidence) -> _Static:
     series = evidence.series
     if evidence.static is not None and not series.standard_static:
         time_s, pressure = evidence.static.time_s, evidence.static.static_pressure_pa
@@ -101,13 +143,11 @@ def _static(evidence: FlightEvidence, middle_s: FloatArray) -> tuple[FloatArray,
     known = np.isfinite(pressure)
     time_s, pressure = time_s[known], pressure[known]
     if time_s.size < 3:
-        return np.full(middle_s.size, np.nan), 0.0
-    low = np.searchsorted(time_s, middle_s - STATIC_HALF_WINDOW_S)
-    high = np.searchsorted(time_s, middle_s + STATIC_HALF_WINDOW_S)
-    reference = float(pressure[0])
-    running = np.concatenate([[0.0], np.cumsum(pressure - reference)])
-    mean = reference + (running[high] - running[low]) / np.maximum(high - low, 1)
-    static_pa = np.where(high > low, mean, np.interp(middle_s, time_s, pressure))
-    sample = 0.5 * float(np.median(np.diff(pressure) ** 2)) / MEDIAN_OF_CHI_SQUARE
-    sample += ROUNDING_VARIANCE * min(rounding_step(pressure) ** 2, sample)
-    return static_pa, sample / max(float(np.median(high - low)), 1.0)
+        return _Static(np.zeros(1), np.full(1, np.nan), 1.0, 0.0)
+    interval_s = max(float(np.median(np.diff(time_s))), 1e-6)
+    width = int(np.clip(STATIC_SMOOTHING_S / interval_s, 1.0, time_s.size)) | 1
+    noise = 0.5 * float(np.median(np.diff(pressure) ** 2)) / MEDIAN_OF_CHI_SQUARE
+    noise += ROUNDING_VARIANCE * min(rounding_step(pressure) ** 2, noise)
+    # from the first: only differences count, and sums of long flights keep their digits
+    smooth = uniform_filter1d(pressure - pressure[0], width, mode="nearest")
+    return _Static(time_s, smooth, interval_s, noise)

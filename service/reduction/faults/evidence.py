@@ -79,7 +79,7 @@ def gather_evidence(
         moving=airborne & _moves(series),
         expected_pa=impact_pressure_from_true_airspeed(speed, series.static_pressure_pa, series.air_temperature_k),
         wind_known=wind_known,
-        zero=_zero(series, given_zero_pa),
+        zero=known_zero(series, given_zero_pa),
         static=static,
         log_gaps=log_gaps,
         sensors=sensors,
@@ -111,7 +111,8 @@ def _moves(series: AirDataSeries) -> BoolArray:
     return np.asarray(np.interp(series.time_s, time_s, closed) > MOVING_MPS)
 
 
-def _zero(series: AirDataSeries, given_pa: float | None) -> KnownZero | None:
+def known_zero(series: AirDataSeries, given_pa: float | None) -> KnownZero | None:
+    """What is known of the zero without a fit: given before read at rest before compensated. None for a raw sensor."""
     if given_pa is not None:
         return KnownZero(given_pa, COMPENSATED_ZERO_UNCERTAINTY_PA)
     rest = series.reading_pa[series.at_rest]

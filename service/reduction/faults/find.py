@@ -28,12 +28,13 @@ CHECKS: tuple[tuple[tuple[FaultKind, ...], Check], ...] = (
     ((FaultKind.FROZEN,), find_frozen),
     ((FaultKind.SPIKES,), find_spikes),
     ((FaultKind.FROZEN_STATIC,), find_frozen_static),
-    ((FaultKind.BLOCKED,), find_blocked),
     ((FaultKind.TRAPPED, FaultKind.BLOCKED), find_no_airflow),
+    ((FaultKind.BLOCKED,), find_blocked),
     ((FaultKind.SWAPPED,), find_swapped),
 )
 """What each check may find, in the order in which they look. A later one does not see samples that an earlier one has
-claimed: single samples go first (a frozen run must not pass for a closed probe), whole stretches after them."""
+claimed: single samples go first (a frozen run must not pass for a closed probe), whole stretches after them (a closed
+probe that passes its zero in a climb must not pass for an open one)."""
 
 
 def find_faults(

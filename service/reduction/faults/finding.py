@@ -59,3 +59,13 @@ def only(size: int, first: int, last: int) -> BoolArray:
     mask = np.zeros(size, dtype=bool)
     mask[first:last] = True
     return mask
+
+
+def widened(time_s: FloatArray, samples: BoolArray, by_s: float) -> BoolArray:
+    """(n,) the True samples and those no more than `by_s` away from one."""
+    where = np.flatnonzero(samples)
+    if where.size == 0:
+        return samples
+    before = time_s[where[np.maximum(np.searchsorted(where, np.arange(samples.size), side="right") - 1, 0)]]
+    after = time_s[where[np.minimum(np.searchsorted(where, np.arange(samples.size)), where.size - 1)]]
+    return np.asarray((np.abs(time_s - before) <= by_s) | (np.abs(after - time_s) <= by_s))

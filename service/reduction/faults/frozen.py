@@ -2,11 +2,11 @@
 
 import numpy as np
 
-from service.domain.arrays import FloatArray
+from service.domain.arrays import FloatArray, IntArray
 from service.domain.codes import FaultKind
 from service.reduction.faults.evidence import FlightEvidence
 from service.reduction.faults.finding import Finding, only, probe_finding
-from service.reduction.faults.held_values import held_runs
+from service.reduction.faults.held_values import HeldRuns, held_runs
 
 USUAL_RUNS = 6.0
 """A frozen run is this many times as long as 95 % of the flight's runs, and half as many times as the longest usual."""
@@ -15,15 +15,22 @@ SHORTEST_S = 3.0
 UNCHANGED_SHARE = 1e-3
 """Of the dynamic pressure by GPS: the noise of any receiver moves it by several times as much."""
 
+WITHOUT_NOISE_SHARE = 0.8
+"""Of the samples in flight, that a made example without noise holds at a few levels,"""
+LEAST_SPREAD = 0.2
+"""whose dynamic pressure by GPS differs by this share of its mean,"""
+LARGEST_MISFIT = 0.3
+"""and from which the levels differ by no more than this share of the difference: the wind is rough."""
+
 
 def find_frozen(evidence: FlightEvidence) -> list[Finding]:
     """Runs of equal readings in the air."""
     time_s = evidence.series.time_s
     flying = np.flatnonzero(np.isfinite(evidence.reading_pa) & evidence.airborne)
     held = held_runs(evidence.reading_pa[flying])
-    if held.coarse:
-        return []
     fewest = max(held.unusual_length(USUAL_RUNS), FEWEST_SAMPLES)
+    if held.coarse or _without_noise(evidence, flying, held, fewest):
+        return []
     findings = []
     for index in np.flatnonzero(held.length >= fewest).tolist():
         first, last = flying[held.first[index]], flying[held.first[index] + held.length[index] - 1]
@@ -45,6 +52,23 @@ def _held_speed(evidence: FlightEvidence, first: int, last: int) -> bool:
         return False
     expected = evidence.expected_pa[first : last + 1]
     return bool(np.ptp(expected) < UNCHANGED_SHARE * np.max(np.abs(expected)))
+
+
+def _without_noise(evidence: FlightEvidence, flying: IntArray, held: HeldRuns, fewest: float) -> bool:
+    """Whether nearly the whole flight is such runs and their levels go with the airspeed by GPS, as in made examples.
+
+    A frozen sensor holds one level, or some that have nothing to do with the airspeed.
+    """
+    long = np.flatnonzero(held.length >= fewest)
+    share = held.length[long].sum() / max(flying.size, 1)
+    if evidence.zero is None or not evidence.wind_known or long.size == 0 or share < WITHOUT_NOISE_SHARE:
+        return False
+    middle = flying[held.first[long] + held.length[long] // 2]
+    level, expected = held.value[long] - evidence.zero.value_pa, evidence.expected_pa[middle]
+    if not np.isfinite(expected).all() or np.ptp(expected) < LEAST_SPREAD * float(expected.mean()):
+        return False
+    scale = float(level @ expected) / float(expected @ expected)
+    return bool(np.max(np.abs(level - scale * expected)) < LARGEST_MISFIT * scale * np.ptp(expected))
 
 
 def _to_the_ground(reading: FloatArray, first: int, last: int) -> tuple[int, int]:

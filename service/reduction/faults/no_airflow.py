@@ -8,7 +8,7 @@ opposite.
 """
 
 from collections.abc import Sequence
-from dataclasses import dataclass, replace
+from dataclasses import dataclass
 
 import numpy as np
 from numpy.lib.stride_tricks import sliding_window_view
@@ -16,15 +16,15 @@ from numpy.lib.stride_tricks import sliding_window_view
 from service.domain.arrays import BoolArray, FloatArray
 from service.domain.codes import FaultKind
 from service.domain.spans import runs
-from service.reduction.faults.blocked import blocked_message
+from service.reduction.faults.blocked import blocked_message, no_airflow_finding
 from service.reduction.faults.blocks import MEDIAN_OF_CHI_SQUARE, SecondBlocks, second_blocks
 from service.reduction.faults.evidence import FlightEvidence
-from service.reduction.faults.finding import Finding, only, probe_finding, span_of
+from service.reduction.faults.finding import Finding, only, span_of
 
-WINDOWS: tuple[tuple[int, float], ...] = ((15, 0.03), (30, 0.15))
+WINDOWS: tuple[tuple[int, float], ...] = ((10, 0.005), (15, 0.015), (24, 0.06), (30, 0.2))
 """Blocks in a window, and the share of the flight's usual variance below which it is quiet. Short windows of sound
-flights are quiet by chance more often. Shares from simulated sound flights: the quietest window of one in a hundred
-flights through calm air kept 0.06 and 0.13."""
+flights are quiet by chance more often: of 580 simulated ones the quietest of 10, 15 and 24 blocks kept 0.004, 0.009 and
+0.087, and none of 30 came down to its noise. What is quiet by chance neither follows the altitude nor falls."""
 WINDOWS_SLOW: tuple[tuple[int, float], ...] = ((15, 0.02), (30, 0.07))
 """The same where too few samples per second tell no noise."""
 NOISE_RATIO = 2.0
@@ -32,21 +32,34 @@ NOISE_RATIO = 2.0
 SOUND_RATIO = 4.0
 WHITE_RATIO = 0.5
 """Half the mean square step over the variance: 1 for white noise, far less for gusts seen once a second."""
-FEWEST_SOUND = 0.1
-"""Share of windows that must be sound for the flight to tell what is usual."""
+FEWEST_SOUND, FEWEST_SOUND_WINDOWS = 0.1, 15
+"""Share and number of windows that must be sound for the flight to tell what is usual."""
 FEWEST_WINDOWS = 30
-"""A window more per second: half a minute and one window. Less tells nothing of what is usual."""
+"""A window more per second: half a minute and one window. Less tells nothing of a whole flight."""
 WHOLE_FLIGHT_SHARE = 0.002
-"""Of the dynamic pressure by GPS: a whole flight that varies less than this senses no air."""
+"""Of the dynamic pressure by GPS: a whole flight that varies less than this, in its median window, senses no air."""
+WINDOW_EXCESS = 4.0
+"""Of that variance, by which one window of such a flight may pass it."""
 MOST_MISSING = 0.2
 CHUNK = 20000
 """Windows looked at together, to bound the memory."""
 LEAST_CONTRAST, MOST_CONTRAST = 2.0, 100.0
+"""Usual step over deviation; where all the flight lost its gusts, the usual step is no more than noise."""
 MOST_MISFIT = 12.0
-"""Of one block, half its square: a lone outlier does not end a span."""
+"""Of one block, half its square: a lone outlier does not end a span,"""
+MOST_GUST_MISFIT = 4.5
+"""and no gust, however large, proves it."""
+MARGIN = 1
+"""Blocks at either end that the smoothing may have cost."""
+MOST_MOVES = 8
+"""Of the ends of a span: each takes in more of the altitude, and tells the slope better."""
 SLOPE_DEVIATIONS = 6.0
 UNEXPLAINED_SHARE = 0.25
 """Of the reading's variance: more than the altitude leaves unexplained is no trapped pressure."""
+FEWEST_TRAPPED = 15
+"""Blocks in which to see a reading follow the altitude; in fewer it may by chance."""
+SCALE_FACTOR = 2.0
+"""Between the probe's scale by the altitude and by GPS: both are rough."""
 SINK_SHARE = 0.2
 SINK_NOISE = 3.0
 SINK_PER_BLOCK = 1.3
@@ -78,12 +91,22 @@ class _Still:
     level_pa: float
     slope: float
     slope_uncertainty: float
+    middle_pa: float
+    """Mean static pressure of the span, at which the level holds."""
     deviation_pa: float
 
-    def misfit(self, blocks: SecondBlocks) -> FloatArray:
-        """(k,) of every block, in standard deviations; NaN where a block is missing."""
-        static = np.zeros(blocks.reading_pa.size) if self.slope == 0.0 else blocks.static_pa
-        return (blocks.reading_pa - self.level_pa - self.slope * static) / self.deviation_pa
+    def line(self, blocks: SecondBlocks) -> FloatArray:
+        """(k,) reading that the span foretells for every block. [Pa]"""
+        return self.level_pa + self.slope * self._away(blocks)
+
+    def deviation_of(self, blocks: SecondBlocks) -> FloatArray:
+        """(k,) standard deviation about it, by noise and by what is not known of the slope. [Pa]"""
+        away = self._away(blocks)
+        by_slope = np.where(away == 0.0, 0.0, self.slope_uncertainty * away) if self.slope < 0.0 else 0.0 * away
+        return np.asarray(np.hypot(self.deviation_pa, by_slope))
+
+    def _away(self, blocks: SecondBlocks) -> FloatArray:
+        return np.zeros(blocks.reading_pa.size) if self.slope == 0.0 else blocks.static_pa - self.middle_pa
 
 
 def find_no_airflow(evidence: FlightEvidence) -> list[Finding]:
@@ -93,46 +116,65 @@ def find_no_airflow(evidence: FlightEvidence) -> list[Finding]:
     blocks = second_blocks(evidence)
     findings = []
     for still in _joined(blocks, [_fitted(blocks, first, last) for first, last in runs(_quiet(blocks))]):
-        samples = only(evidence.series.time_s.size, int(blocks.start[still.first]), int(blocks.start[still.last]))
         kind = _kind(evidence, blocks, still)
+        first = _before_sinking(blocks, still) if kind is FaultKind.BLOCKED else still.first
+        first, last = max(first - MARGIN, 0), min(still.last + MARGIN, blocks.reading_pa.size)
+        samples = only(evidence.series.time_s.size, int(blocks.start[first]), int(blocks.start[last]))
+        samples &= evidence.airborne
         if samples.any() and kind is not None:
-            findings.append(_finding(evidence.series.time_s, kind, samples))
+            findings.append(_finding(evidence, kind, samples))
     return findings
 
 
-def _finding(time_s: FloatArray, kind: FaultKind, samples: BoolArray) -> Finding:
+def _finding(evidence: FlightEvidence, kind: FaultKind, samples: BoolArray) -> Finding:
+    time_s = evidence.series.time_s
     start_s, end_s = span_of(time_s, samples)
-    if kind is FaultKind.BLOCKED:
-        return probe_finding(kind, time_s, samples, blocked_message(start_s, end_s))
-    message = (
-        f"The reading shows no gusts and follows the altitude from {start_s:.1f} s to {end_s:.1f} s: ram hole and "
-        "drain are most likely blocked and hold the pressure of that moment. Clear and blow-test the probe."
-    )
-    return probe_finding(kind, time_s, samples, message)
+    message = blocked_message(start_s, end_s)
+    if kind is FaultKind.TRAPPED:
+        message = (
+            f"The reading shows no gusts and follows the altitude from {start_s:.1f} s to {end_s:.1f} s: ram hole and "
+            "drain are most likely blocked and hold the pressure of that moment. Clear and blow-test the probe."
+        )
+    return no_airflow_finding(kind, time_s, samples, evidence.airborne, message)
 
 
 def _kind(evidence: FlightEvidence, blocks: SecondBlocks, still: _Still) -> FaultKind | None:
     """None where the air was only quiet: the reading neither follows the altitude nor fell."""
     inside = slice(still.first, still.last)
-    scatter = float(np.nanvar(blocks.reading_pa[inside]))
-    follows = -still.slope > SLOPE_DEVIATIONS * still.slope_uncertainty
-    if follows and still.deviation_pa**2 < UNEXPLAINED_SHARE * scatter:
+    if _follows_altitude(evidence, blocks, still):
         return FaultKind.TRAPPED
     level, expected = float(np.nanmedian(blocks.reading_pa[inside])), float(np.median(blocks.expected_pa[inside]))
     if evidence.zero is not None:
+        if evidence.wind_known:
+            return None  # `find_blocked` looks after this, and tells the ends better
         # a reading far above a known zero senses air, however steady the airspeed is held
         blocked = abs(level - evidence.zero.value_pa) < NOTHING_SHARE * expected
     else:
-        blocked = not _usual_level(blocks, inside) - level < SINK_SHARE * expected
+        sinking = slice(_before_sinking(blocks, still), still.last)
+        blocked = not _usual(blocks, blocks.reading_pa, sinking) - level < SINK_SHARE * expected
     return FaultKind.BLOCKED if blocked else None
 
 
-def _usual_level(blocks: SecondBlocks, but: slice) -> float:
-    """Median reading in flight outside of `but`; NaN where there is next to none."""
-    elsewhere = blocks.airborne & np.isfinite(blocks.reading_pa)
+def _follows_altitude(evidence: FlightEvidence, blocks: SecondBlocks, still: _Still) -> bool:
+    """Whether the altitude explains how the reading moves, one for one in the probe's own scale."""
+    inside = slice(still.first, still.last)
+    scatter = float(np.nanvar(blocks.reading_pa[inside]))
+    follows = -still.slope > SLOPE_DEVIATIONS * still.slope_uncertainty
+    if not follows or still.last - still.first < FEWEST_TRAPPED or still.deviation_pa**2 > UNEXPLAINED_SHARE * scatter:
+        return False
+    if evidence.zero is None:
+        return True
+    # what the probe makes of a pascal, by what it usually reads; a probe that never read anything else tells nothing
+    sensed = (blocks.reading_pa - evidence.zero.value_pa) / np.maximum(blocks.expected_pa, 1.0)
+    usual = _usual(blocks, sensed, inside)
+    return not (-still.slope < usual / SCALE_FACTOR or -still.slope > usual * SCALE_FACTOR)
+
+
+def _usual(blocks: SecondBlocks, values: FloatArray, but: slice) -> float:
+    """Median of (k,) values in flight outside of `but`; NaN where there is next to nothing."""
+    elsewhere = blocks.airborne & np.isfinite(values)
     elsewhere[but] = False
-    enough = elsewhere.sum() >= FEWEST_ELSEWHERE
-    return float(np.median(blocks.reading_pa[elsewhere])) if enough else np.nan
+    return float(np.median(values[elsewhere])) if elsewhere.sum() >= FEWEST_ELSEWHERE else np.nan
 
 
 def _quiet(blocks: SecondBlocks) -> BoolArray:
@@ -165,8 +207,8 @@ def _scan(blocks: SecondBlocks, length: int) -> _Windows:
     parts = [_regressions(reading[chunk], static[chunk], noise[chunk], length) for chunk in chunks]
     slope, variance, noise, white, covariance = (np.concatenate(columns) for columns in zip(*parts, strict=True))
     by_static = slope**2 * blocks.static_noise_pa2
-    # The static pressure is a mean of two blocks: half of its noise is its neighbour's too.
-    return _Windows(length, valid, variance, noise + by_static, white, covariance - 0.5 * by_static)
+    noise = noise + by_static
+    return _Windows(length, valid, variance, noise, white, covariance - blocks.noise_overlap * noise)
 
 
 def _regressions(reading: FloatArray, static: FloatArray, noise: FloatArray, length: int) -> tuple[FloatArray, ...]:
@@ -197,30 +239,33 @@ def _still_windows(windows: _Windows, share: float, slow: bool) -> BoolArray:
     else:
         sound = windows.valid & (windows.variance_pa2 > SOUND_RATIO * windows.noise_pa2)
         white = windows.variance_pa2 < NOISE_RATIO * windows.noise_pa2
-    if sound.sum() < max(FEWEST_SOUND * windows.valid.sum(), FEWEST_WINDOWS):
+    if sound.sum() < max(FEWEST_SOUND * windows.valid.sum(), FEWEST_SOUND_WINDOWS):
         return np.zeros(windows.valid.size, dtype=bool)
     usual = float(np.median(windows.variance_pa2[sound]))
     return np.asarray(windows.valid & white & (windows.variance_pa2 < share * usual))
 
 
 def _still_flight(blocks: SecondBlocks, windows: _Windows) -> BoolArray:
-    """All valid windows, if not even all of them together hold anything but noise."""
+    """Windows without gusts, of a flight most of which holds nothing but noise."""
     if windows.valid.sum() < FEWEST_WINDOWS:
         return np.zeros(windows.valid.size, dtype=bool)
     excess = float(np.median(windows.excess_pa2[windows.valid]))
     expected = float(np.median(blocks.expected_pa[blocks.airborne]))
-    still = expected > 0.0 and excess < (WHOLE_FLIGHT_SHARE * expected) ** 2
-    return windows.valid if still else np.zeros(windows.valid.size, dtype=bool)
+    least = (WHOLE_FLIGHT_SHARE * expected) ** 2
+    if expected <= 0.0 or excess >= least:
+        return np.zeros(windows.valid.size, dtype=bool)
+    return np.asarray(windows.valid & (windows.excess_pa2 < WINDOW_EXCESS * least))
 
 
 def _fitted(blocks: SecondBlocks, first: int, last: int) -> _Still:
-    """The span's own level and slope, its ends moved to where gusts begin, a sinking before it taken in."""
+    """The span's own level and slope, its ends moved to where gusts begin."""
     usual_step = _usual_step(blocks, slice(first, last))
-    for _ in range(2):
+    for _ in range(MOST_MOVES):
         still = _regressed(blocks, first, last)
         first, last = _edges(blocks, still, usual_step)
-    still = _regressed(blocks, first, last)
-    return replace(still, first=_before_sinking(blocks, still))
+        if (first, last) == (still.first, still.last):
+            break
+    return _regressed(blocks, first, last)
 
 
 def _usual_step(blocks: SecondBlocks, but: slice) -> float:
@@ -236,28 +281,39 @@ def _regressed(blocks: SecondBlocks, first: int, last: int) -> _Still:
     known = np.isfinite(reading)
     with_static = known & np.isfinite(static)
     y, p = reading[with_static], static[with_static]
-    power = float(np.sum((p - p.mean()) ** 2)) if p.size > 2 else 0.0
-    slope = min(float(np.sum((y - y.mean()) * (p - p.mean())) / power), 0.0) if power > 0.0 else 0.0
-    rest = y - slope * p if slope < 0.0 else reading[known]
+    middle = float(p.mean()) if p.size else 0.0
+    power = float(np.sum((p - middle) ** 2)) if p.size > 2 else 0.0
+    slope = min(float(np.sum((y - y.mean()) * (p - middle)) / power), 0.0) if power > 0.0 else 0.0
+    rest = y - slope * (p - middle) if slope < 0.0 else reading[known]
     level = float(np.median(rest))
     deviation = max(float(np.sqrt(np.mean((rest - rest.mean()) ** 2))), 1e-6)
     uncertainty = deviation / np.sqrt(power) if power > 0.0 else np.inf
-    return _Still(first, last, level, slope, float(uncertainty), deviation)
+    return _Still(first, last, level, slope, float(uncertainty), middle, deviation)
 
 
 def _edges(blocks: SecondBlocks, still: _Still, usual_step_pa: float) -> tuple[int, int]:
-    """The likeliest first and last block: each scores the log-likelihood of noise about the span's own level and slope
-    over that of a gust's step from its neighbour."""
-    gain = np.log(np.clip(usual_step_pa / still.deviation_pa, LEAST_CONTRAST, MOST_CONTRAST))
-    score = gain - np.minimum(0.5 * still.misfit(blocks) ** 2, MOST_MISFIT)
-    score = np.where(blocks.airborne, np.nan_to_num(score, nan=0.0), -np.inf)
+    """The likeliest first and last block: each block scores the log-likelihood of the span's own line, continued, over
+    that of a gust's step from its neighbour towards the span."""
     middle = (still.first + still.last) // 2
-    return middle - int(np.argmax(np.cumsum(score[middle::-1]))), middle + int(np.argmax(np.cumsum(score[middle:]))) + 1
+    backward = _score(blocks, still, usual_step_pa, -1)[middle::-1]
+    forward = _score(blocks, still, usual_step_pa, 1)[middle:]
+    return middle - int(np.argmax(np.cumsum(backward))), middle + int(np.argmax(np.cumsum(forward))) + 1
+
+
+def _score(blocks: SecondBlocks, still: _Still, usual_step_pa: float, outward: int) -> FloatArray:
+    """(k,) in favour of the span's line, for a search that goes `outward` (1 later, -1 earlier)."""
+    deviation = still.deviation_of(blocks)
+    usual_step = np.clip(usual_step_pa, LEAST_CONTRAST * deviation, MOST_CONTRAST * deviation)
+    step = np.diff(blocks.reading_pa, prepend=np.nan) if outward > 0 else np.diff(blocks.reading_pa, append=np.nan)
+    gust_misfit = np.minimum(0.5 * (np.nan_to_num(step) / usual_step) ** 2, MOST_GUST_MISFIT)
+    misfit = np.minimum(0.5 * ((blocks.reading_pa - still.line(blocks)) / deviation) ** 2, MOST_MISFIT)
+    score = np.log(usual_step / deviation) + gust_misfit - misfit
+    return np.where(blocks.airborne, np.nan_to_num(score, nan=0.0), -np.inf)
 
 
 def _before_sinking(blocks: SecondBlocks, still: _Still) -> int:
     """First block of a drained line's sinking to the level of the span; the span's own first where none led to it."""
-    away = still.misfit(blocks) * still.deviation_pa
+    away = blocks.reading_pa - still.line(blocks)
     noise, first = SINK_NOISE * still.deviation_pa, still.first
     while first > 0 and blocks.airborne[first - 1] and away[first - 1] > max(SINK_PER_BLOCK * away[first], 0.0) - noise:
         first -= 1

@@ -41,15 +41,39 @@ class Levels:
     information: FloatArray
     """(k + 1, k + 1)"""
 
-    def between(self) -> tuple[FloatArray, FloatArray]:
-        """(k + 1, k + 1) relative step of the speed in the span from boundary i to j > i, and its variance."""
-        diagonal = np.diag(self.information)
-        information = diagonal[:, None] + diagonal[None, :] - 2.0 * self.information
+    def between(
+        self, opens_late: FloatArray | None = None, closes_late: FloatArray | None = None
+    ) -> tuple[FloatArray, FloatArray]:
+        """(k + 1, k + 1) relative step of the speed in the span from boundary i to j > i, and its variance.
+
+        Parameters
+        ----------
+        opens_late, closes_late : (k + 1,), -1 to 1
+            How much later than the boundary between its points a span opens or closes, in lengths of a point's average:
+            a point that holds the edge itself shows a part of the step.
+        """
+        opening, closing = _late(self.moment.size, opens_late), _late(self.moment.size, closes_late)
+        crossed = opening @ self.information @ closing.T
+        information = _quadratic(opening, self.information)[:, None] + _quadratic(closing, self.information)[None, :]
+        information -= 2.0 * crossed
         upper = np.triu(np.ones_like(information, dtype=bool), 1)
         upper &= information > LEAST_INFORMATION * information.max()
         safe = np.where(upper, information, 1.0)
-        step = np.where(upper, (self.moment[None, :] - self.moment[:, None]) / safe, 0.0)
+        step = np.where(upper, ((closing @ self.moment)[None, :] - (opening @ self.moment)[:, None]) / safe, 0.0)
         return step, np.where(upper, 1.0 / safe, np.inf)
+
+
+def _late(size: int, late: FloatArray | None) -> FloatArray:
+    """(size, size) weights that move each boundary towards its neighbour."""
+    if late is None:
+        return np.eye(size)
+    later, earlier = np.clip(late, 0.0, 1.0), np.clip(-late, 0.0, 1.0)
+    later[-1] = earlier[0] = 0.0
+    return np.asarray(np.diag(1.0 - later - earlier) + np.diag(later[:-1], 1) + np.diag(earlier[1:], -1))
+
+
+def _quadratic(weights: FloatArray, matrix: FloatArray) -> FloatArray:
+    return np.asarray(np.einsum("ij,ij->i", weights @ matrix, weights))
 
 
 def levels_of_spans(points: FittedPoints, zero_doubt: float = 0.0) -> Levels:

@@ -24,7 +24,9 @@ DEVIATION_TO_SIGMA = 1.4826
 SHARE_OF_LEVEL = 0.02
 """Deviations below this share of the reading's usual size harm nothing."""
 JOIN_S = 30.0
-"""Spikes closer than this are told as one fault."""
+"""Spikes closer than this are told as one fault,"""
+JOIN_GAPS = 9.0
+"""and those within this many of the usual gap between them: of spikes at random one gap in 500 is longer."""
 
 
 def find_spikes(evidence: FlightEvidence) -> list[Finding]:
@@ -36,7 +38,7 @@ def find_spikes(evidence: FlightEvidence) -> list[Finding]:
     spiky = np.zeros(time_s.size, dtype=bool)
     spiky[known] = _spiky(evidence.reading_pa[known])
     findings = []
-    for first, last in episodes(time_s, spiky, JOIN_S):
+    for first, last in episodes(time_s, spiky, _join_s(time_s[spiky])):
         inside = spiky.copy()
         inside[:first] = inside[last:] = False
         message = (
@@ -45,6 +47,11 @@ def find_spikes(evidence: FlightEvidence) -> list[Finding]:
         )
         findings.append(probe_finding(FaultKind.SPIKES, time_s, inside, message))
     return findings
+
+
+def _join_s(spike_s: FloatArray) -> float:
+    """Gap that still belongs to one group of (m,) spikes at random. [s]"""
+    return max(JOIN_S, JOIN_GAPS * float(np.median(np.diff(spike_s)))) if spike_s.size > 2 else JOIN_S
 
 
 def _spiky(reading: FloatArray) -> BoolArray:

@@ -143,6 +143,30 @@ def test_frozen_throughout_marks_every_sample() -> None:
     assert report.probe_faulty.all()
 
 
+def at_two_speeds(second_pa: float) -> tuple[Circling, AirDataSeries]:
+    """A reading without noise that goes from one level to another, while the noisy GPS sees 1.3 times the speed."""
+    flight = circling()
+    ramp_s = [START_S, START_S + 6.0]
+    faster = np.interp(flight.series.gps_time_s, ramp_s, [1.0, 1.3])
+    series = replace(
+        flight.reading(np.interp(flight.time_s, ramp_s, [177.0, second_pa])),
+        velocity_north_mps=(flight.series.velocity_north_mps - WIND_NORTH_MPS) * faster + WIND_NORTH_MPS,
+        velocity_east_mps=(flight.series.velocity_east_mps - WIND_EAST_MPS) * faster + WIND_EAST_MPS,
+    )
+    return flight, series
+
+
+def test_a_reading_without_noise_that_goes_with_the_airspeed_is_not_frozen() -> None:
+    assert report_of(*at_two_speeds(177.0 * 1.3**2)).faults == ()
+
+
+@pytest.mark.parametrize("second_pa", [120.0, 190.0])
+def test_a_reading_that_holds_levels_of_its_own_is_frozen(second_pa: float) -> None:
+    report = report_of(*at_two_speeds(second_pa))
+    assert {fault.fault for fault in report.faults} == {FaultKind.FROZEN}
+    assert report.probe_faulty.mean() > 0.95
+
+
 def test_the_same_reading_at_rest_is_no_fault() -> None:
     flight = circling(rest_s=60.0)
     assert (
@@ -221,6 +245,29 @@ def test_trapped_follows_the_altitude(climb_mps: float) -> None:
     assert_marked(report, flight)
 
 
+@pytest.mark.parametrize(("sink_mps", "lasting_s"), [(3.0, 10.0), (1.0, 20.0)])
+def test_trapped_is_followed_from_level_flight_through_a_descent(sink_mps: float, lasting_s: float) -> None:
+    """The level parts tell next to nothing of how the reading goes with the altitude; it passes its zero on the way."""
+    flight = circling(2, pressure_scale=0.8, gust_mps=0.15)
+    sunk = PASCAL_PER_METRE * sink_mps * np.clip(flight.time_s - 165.0, 0.0, lasting_s)
+    static_pa = flight.series.static_pressure_pa + sunk
+    static = replace(flight.static, static_pressure_pa=flight.static.static_pressure_pa + sunk)
+    first = np.flatnonzero(inside(flight))[0]
+    closed = flight.series.reading_pa[first] + (static_pa[first] - static_pa) / 0.8 + noise(flight)
+    series = flight.reading(np.where(inside(flight), closed, flight.series.reading_pa))
+    report = report_of(flight, replace(series, static_pressure_pa=static_pa), static=static)
+    assert_span(only_fault(report, FaultKind.TRAPPED))
+    assert_marked(report, flight)
+
+
+def test_a_descent_of_a_sound_probe_is_no_fault() -> None:
+    flight = circling(pressure_scale=0.8)
+    sunk = PASCAL_PER_METRE * 3.0 * np.clip(flight.time_s - 180.0, 0.0, 10.0)
+    series = replace(flight.series, static_pressure_pa=flight.series.static_pressure_pa + sunk)
+    static = replace(flight.static, static_pressure_pa=flight.static.static_pressure_pa + sunk)
+    assert report_of(flight, series, static=static).faults == ()
+
+
 def test_quiet_air_alone_is_not_trapped() -> None:
     flight = circling(gust_mps=0.5)
     calm = circling(gust_mps=0.05)
@@ -274,6 +321,23 @@ def test_only_the_spikes_are_marked(interval_s: float) -> None:
     report = report_of(flight, flight.reading(flight.series.reading_pa + 90.0 * sign * hit))
     assert {fault.fault for fault in report.faults} == {FaultKind.SPIKES}
     np.testing.assert_array_equal(report.probe_faulty, hit)
+
+
+@pytest.mark.parametrize("interval_s", [0.1, 1.0])
+def test_spikes_of_a_loose_contact_are_told_as_one_fault(interval_s: float) -> None:
+    flight = circling(step_s=interval_s, duration_s=900.0)
+    hit = np.zeros(flight.time_s.size, dtype=bool)
+    hit[(np.array([100.0, 131.0, 175.0, 198.0, 290.0, 330.0, 380.0, 470.0, 499.0]) / interval_s).astype(int)] = True
+    fault = only_fault(report_of(flight, flight.reading(flight.series.reading_pa + 90.0 * hit)), FaultKind.SPIKES)
+    assert_span(fault, 100.0, 499.0, 0.2)
+    assert fault.message.startswith("9 lone readings")
+
+
+def test_two_bursts_of_spikes_are_told_apart() -> None:
+    flight = circling(duration_s=600.0)
+    hit = np.isin(np.arange(flight.time_s.size) % 50, [7]) & ((flight.time_s < 60.0) | (flight.time_s > 540.0))
+    faults = report_of(flight, flight.reading(flight.series.reading_pa + 90.0 * hit)).faults
+    assert [fault.fault for fault in faults] == [FaultKind.SPIKES, FaultKind.SPIKES]
 
 
 def test_a_gap_in_time_is_a_dropout() -> None:
@@ -422,7 +486,7 @@ def test_faults_come_in_order_of_time_each_with_a_message() -> None:
     assert all(f"{fault.start_s:.1f} s" in fault.message for fault in faults)
 
 
-@pytest.mark.parametrize("count", [0, 1, 2, 5])
+@pytest.mark.parametrize("count", [0, 1, 2, 5, 10, 11, 25, 100])
 def test_next_to_no_samples_raise_nothing(count: int) -> None:
     flight = circling()
     series = flight.series

@@ -6,7 +6,7 @@ import numpy as np
 import pytest
 
 from service.domain.arrays import BoolArray, FloatArray
-from service.domain.codes import Direction
+from service.domain.codes import Direction, ZeroOffsetSource
 from service.domain.log import ReadingGap, StaticSamples
 from service.domain.results import AirDataSeries, Estimate, FittedPoints, Loiter
 from service.reduction.faults import find_faults, find_scale_step
@@ -87,6 +87,7 @@ class Fit:
     zero_offset_pa: float
     pressure_scale: float = 1.0
     covariance: FloatArray = field(default_factory=lambda: np.diag([1e-4, 1.0]))
+    zero_offset_source: ZeroOffsetSource = ZeroOffsetSource.FITTED
     gps_delay_s: Estimate | None = None
 
 

@@ -5,8 +5,8 @@ from dataclasses import dataclass, field, replace
 import numpy as np
 import pytest
 
-from service.domain.arrays import FloatArray
-from service.domain.codes import Direction, FaultKind
+from service.domain.arrays import BoolArray, FloatArray
+from service.domain.codes import Direction, FaultKind, ZeroOffsetSource
 from service.domain.results import AirDataSeries, Estimate, Fault, FittedPoints, Loiter
 from service.reduction.faults import find_scale_step
 from service.reduction.faults.scale_levels import levels_of_spans
@@ -27,6 +27,7 @@ class Fit:
     pressure_scale: float = 1.0
     zero_offset_pa: float = 0.0
     covariance: FloatArray = field(default_factory=lambda: np.diag([1e-4, 1.0]))
+    zero_offset_source: ZeroOffsetSource = ZeroOffsetSource.PRIOR
     gps_delay_s: Estimate | None = None
 
 
@@ -58,9 +59,12 @@ def flight(
     return whole.reading(reading), points
 
 
-def told(series: AirDataSeries | None, points: FittedPoints) -> Fault | None:
-    usable = None if series is None else np.ones(series.time_s.size, dtype=bool)
-    return find_scale_step(points, LOITERS, Fit(), series=series, usable=usable)
+def told(
+    series: AirDataSeries | None, points: FittedPoints, fit: Fit | None = None, usable: BoolArray | None = None
+) -> Fault | None:
+    if series is not None and usable is None:
+        usable = np.ones(series.time_s.size, dtype=bool)
+    return find_scale_step(points, LOITERS, fit or Fit(), series=series, usable=usable)
 
 
 @pytest.mark.parametrize("gust_mps", [0.15, 0.4, 0.9])
@@ -124,6 +128,49 @@ def test_a_late_gps_moves_the_level_to_the_probe_s_clock() -> None:
     assert fault.start_s == pytest.approx(230.0, abs=0.5)
 
 
+@pytest.mark.parametrize("overlooked_s", [0.0, 0.2, 0.3, 0.5])
+@pytest.mark.parametrize("seed", [0, 3, 4])
+def test_what_another_fault_leaves_at_its_edges_is_no_leak(overlooked_s: float, seed: int) -> None:
+    """A blocked probe whose first samples of sinking were overlooked."""
+    series, points = flight(seed)
+    time_s = series.time_s
+    blocked = (time_s >= 150.0) & (time_s <= 190.0)
+    reading = np.where(blocked, series.reading_pa * np.exp(-(time_s - 150.0) / 1.5), series.reading_pa)
+    usable = ~(blocked & (time_s >= 150.0 + overlooked_s))
+    within = (points.time_s > 150.0) & (points.time_s < 190.0)
+    kept = FittedPoints(*(getattr(points, name)[~within] for name in FittedPoints.__slots__))
+    assert told(replace(series, reading_pa=reading), kept, usable=usable) is None
+
+
+def test_a_leak_that_the_fit_took_for_a_wrong_zero_is_found_by_its_edge() -> None:
+    """The fit gave the zero up and found another, so far off that the step hardly shows in its speeds."""
+    series, points = flight(3, (230.0, DURATION_S))
+    zero_pa, scale = -900.0, 0.165
+    speed = points.probe_true_airspeed_mps
+    flattened = np.sqrt(speed**2 * scale - 2.0 * scale * zero_pa / 1.225)
+    confused = replace(points, probe_true_airspeed_mps=flattened, wind_corrected_speed_mps=np.full_like(speed, 17.0))
+    fit = Fit(scale, zero_pa, np.diag([0.01, 1e4]), ZeroOffsetSource.FITTED)
+    fault = told(series, confused, fit)
+    assert fault is not None
+    assert fault.start_s == pytest.approx(230.0, abs=0.5)
+    assert "10 % less" in fault.message or "9 % less" in fault.message or "11 % less" in fault.message
+
+
+def test_a_zero_that_the_flight_rightly_contradicts_is_no_leak() -> None:
+    """The sensor was said to be zeroed, and was 40 Pa off; the second loiter was flown faster."""
+    series, points = flight(11)
+    faster = np.interp(series.time_s, [150.0, 200.0], [1.0, 1.4])
+    reading = series.reading_pa * faster**2 + 40.0
+    at_points = np.interp(points.time_s, series.time_s, faster)
+    right = replace(
+        points,
+        probe_true_airspeed_mps=points.probe_true_airspeed_mps * at_points,
+        wind_corrected_speed_mps=points.wind_corrected_speed_mps * at_points,
+    )
+    fit = Fit(1.0, 40.0, np.diag([1e-4, 4.0]), ZeroOffsetSource.FITTED)
+    assert told(replace(series, reading_pa=reading), right, fit) is None
+
+
 def test_too_few_points_tell_nothing() -> None:
     series, points = flight(8, (10.0, 30.0))
     few = FittedPoints(*(getattr(points, name)[:20] for name in FittedPoints.__slots__))
@@ -136,3 +183,20 @@ def test_the_level_of_a_known_step_is_recovered_within_its_variance() -> None:
     boundary, last = step.shape[0] // 2, step.shape[0] - 1
     assert step[boundary, last] == pytest.approx(np.log(LEAK) / 2, abs=3.0 * np.sqrt(variance[boundary, last]))
     assert np.sqrt(variance[boundary, last]) < 0.02
+
+
+@pytest.mark.parametrize("late", [-0.4, 0.0, 0.25, 0.5])
+def test_a_point_that_holds_the_edge_itself_does_not_shrink_the_step(late: float) -> None:
+    """The leak opens before or within a point, which then shows a part of it."""
+    _, points = flight(12)
+    points = FittedPoints(*(getattr(points, name)[:150] for name in FittedPoints.__slots__))
+    boundary, step = 100, -0.05
+    leaking = np.where(np.arange(points.time_s.size) < boundary, 0.0, 1.0)
+    leaking[boundary] -= max(late, 0.0)
+    leaking[boundary - 1] += max(-late, 0.0)
+    speed = points.wind_corrected_speed_mps
+    levels = levels_of_spans(replace(points, probe_true_airspeed_mps=speed * (1.0 + step * leaking)))
+    opens_late = np.zeros(points.time_s.size + 1)
+    opens_late[boundary] = late
+    found, _ = levels.between(opens_late)
+    assert found[boundary, -1] == pytest.approx(step, rel=1e-6)

@@ -39,7 +39,7 @@ LEAST_TURBULENCE = 0.15
 SHARE_OF_CEILING = 2.0 / 3.0
 """Where the profile foretells more than the reading's unrest allows: the upper part of what it allows."""
 HEADING_UNKNOWN_SHARE = 0.4
-"""Mean of max(cos, 0)^2: 0.25 over all headings, near 1 into the wind, where most take off and land (common practice)."""
+"""Mean of max(cos, 0)^2: 0.25 over all headings, 1 into the wind, where most take off and land (common practice)."""
 HEADING_UNKNOWN_SPREAD = 0.35
 
 

@@ -1,4 +1,4 @@
-"""The console command `loiterwise`: `serve` and `reduce`.
+"""The console command `loiterwise`: `reduce`, `serve`, and what `cli_keeping.py` adds.
 
 Exit codes of `reduce`: 0 answered (accepted or doubtful), 3 answered but refused, 2 the file or the settings are wrong,
 1 a failure of our own.
@@ -14,8 +14,10 @@ from pathlib import Path
 from typing import TYPE_CHECKING, BinaryIO, NoReturn
 
 from schemas.parts import PARTS
+from service.cli_keeping import add_commands, keeping_environment, run_workers
 from service.config import PREFIX, ConfigurationWrong, config_from_environment, listen_address
 from service.domain.errors import LoiterwiseError
+from service.log_lines import log_to_stderr
 from service.version import SERVICE
 
 if TYPE_CHECKING:
@@ -80,6 +82,7 @@ def _parser() -> argparse.ArgumentParser:
     serve.add_argument("--workers", type=int, help="processes")
     serve.add_argument("--threads", type=int, help="threads per process")
     serve.set_defaults(run=_serve)
+    add_commands(commands)
     return parser
 
 
@@ -179,10 +182,14 @@ def _serve(given: argparse.Namespace) -> int:
     for name in ("bind", "workers", "threads"):
         if (value := getattr(given, name)) is not None:
             os.environ[f"{PREFIX}{name.upper()}"] = str(value)
-    listen_address(config_from_environment())  # says what is wrong before the server starts
+    config = config_from_environment(keeping_environment(os.environ))
+    listen_address(config)  # says what is wrong before the server starts
+    os.environ.update(keeping_environment(os.environ))
+    log_to_stderr(config.log_level)
     sys.stdout.flush()
-    command = [sys.executable, "-m", "gunicorn", "-c", "python:service.server", "service.app:create_app()"]
-    os.execv(sys.executable, command)
+    # the server runs beside the workers of kept flights: one of them ends, all end
+    server = [sys.executable, "-m", "gunicorn", "-c", "python:service.server", "service.app:create_app()"]
+    return run_workers(config, beside=server)
 
 
 def _write(encoded: bytes) -> None:

@@ -13,6 +13,11 @@ from typing import Any
 PREFIX = "LOITERWISE_"
 SHORTEST_KEY = 16
 MIB = 1024 * 1024
+DATA_FOLDER = "loiterwise-data"
+"""Where `loiterwise serve` keeps flights when nothing is said: under the working directory."""
+
+SECRET = frozenset({PREFIX + "KEY", PREFIX + "DATABASE_URL", PREFIX + "LOG_STORE_URL"})
+"""Variables whose values no message shows."""
 
 
 class ConfigurationWrong(Exception):
@@ -32,7 +37,8 @@ class Config:
     key: str | None = field(default=None, repr=False)
     """The bearer key that calls need while `access` is `keys`."""
     data: Path | None = None
-    """The data folder; uploads rest there while they are reduced, else in the system's temporary folder."""
+    """The data folder: the database, the logs and series that are kept, uploads under way. None keeps nothing, unless
+    `database_url` is set; uploads then rest in the system's temporary folder."""
     max_upload_bytes: int = 256 * MIB
     """Of a body as it is sent (compressed, if it is)."""
     max_decoded_bytes: int = 512 * MIB
@@ -50,6 +56,34 @@ class Config:
     """Host, or host:port, to listen on."""
     workers: int = 2
     threads: int = 4
+    database_url: str | None = field(default=None, repr=False)
+    """SQLite or PostgreSQL; without it a SQLite file in the data folder."""
+    log_store_url: str | None = field(default=None, repr=False)
+    """Where logs and series rest; without it the data folder."""
+    answer_wait_s: float = 30.0
+    """How long `POST /v1/flights` waits for its reduction before it answers 202."""
+    job_workers: int = 2
+    """Processes that `serve` and `work` start to reduce kept flights; 0: none."""
+    job_seconds: float = 120.0
+    """Longest time of one attempt at a job."""
+    job_memory_bytes: int = 2048 * MIB
+    job_attempts: int = 3
+    queue_limit: int = 1000
+    """Jobs that wait; over it new ones are refused."""
+    log_days: float | None = None
+    """Age at which the logs of flights go; their results stay. None keeps them."""
+    result_days: float | None = None
+    """Age at which flights go, log and results."""
+
+    @property
+    def keeps(self) -> bool:
+        """Are flights kept?"""
+        return self.data is not None or self.database_url is not None
+
+    @property
+    def folder(self) -> Path:
+        """The data folder, when flights are kept: a database by URL alone keeps its files in `loiterwise-data`."""
+        return self.data or Path(DATA_FOLDER)
 
     @property
     def spool(self) -> Path:
@@ -103,7 +137,7 @@ def _read(variable: str, text: str, parse: Callable[[str], Any]) -> Any:
     try:
         return parse(text)
     except ValueError as error:
-        shown = "the value" if variable == PREFIX + "KEY" else repr(text)
+        shown = "the value" if variable in SECRET else repr(text)
         raise ConfigurationWrong(f"{variable}: {shown} is not usable: {error}") from error
 
 
@@ -120,6 +154,26 @@ def _whole(text: str) -> int:
     if number < 1:
         raise ValueError("it must be a whole number of at least 1")
     return number
+
+
+def _count(text: str) -> int:
+    number = int(text)
+    if number < 0:
+        raise ValueError("it must be a whole number of at least 0")
+    return number
+
+
+def _positive(text: str) -> float:
+    number = float(text)
+    if not (math.isfinite(number) and number > 0):
+        raise ValueError("it must be a number above 0")
+    return number
+
+
+def _database(text: str) -> str:
+    if text.partition(":")[0].partition("+")[0] not in ("sqlite", "postgres", "postgresql"):
+        raise ValueError("it must be sqlite:///... or postgresql://...")
+    return text
 
 
 def _seconds(text: str) -> float:
@@ -162,4 +216,14 @@ _PARSERS: dict[str, Callable[[str], Any]] = {
     "bind": str,
     "workers": _whole,
     "threads": _whole,
+    "database_url": _database,
+    "log_store_url": str,
+    "answer_wait_s": _seconds,
+    "job_workers": _count,
+    "job_seconds": _positive,
+    "job_memory_bytes": _whole,
+    "job_attempts": _whole,
+    "queue_limit": _whole,
+    "log_days": _positive,
+    "result_days": _positive,
 }

@@ -91,7 +91,9 @@ def _operation(document: Json, path: str, method: str, operation: Json) -> Opera
 def _answers(document: Json, status: str, entry: Json) -> Iterator[Row]:
     if "$ref" in entry:
         entry = document["components"]["responses"][_last(entry["$ref"])]
-    for row in _contents(entry["content"]):
+    if "content" not in entry:
+        yield Row(status, False, Kind("no body"), entry["description"])
+    for row in _contents(entry.get("content", {})):
         yield Row(f"{status} {row.name}", False, row.kind, entry["description"])
 
 

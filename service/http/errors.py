@@ -15,12 +15,19 @@ from service.http.failures import (
     BodyCutShort,
     BodyNotSupported,
     KeyMissing,
+    MissingPrecondition,
     NoRoom,
     NothingAcceptable,
+    NotReducedYet,
+    PreconditionFailed,
+    QueueFull,
+    ScopeMissing,
     TooBusy,
     UploadTooSlow,
 )
+from service.keeping import NothingKept
 from service.log_lines import ROOT, request_id
+from service.storage.errors import IdempotencyConflict, LogGone, NotKept, StorageUnavailable, VersionConflict
 
 PROBLEM_JSON = "application/problem+json"
 MOST_ERRORS = 100
@@ -47,14 +54,27 @@ KINDS: dict[type[LoiterwiseError], Kind] = {
     UnreadableInput: Kind(400, "unreadable", "The body cannot be read"),
     BodyCutShort: Kind(400, "cut-short", "The body ended early"),
     KeyMissing: Kind(401, "key-missing", "A key is needed"),
+    ScopeMissing: Kind(403, "scope-missing", "The key may not do this"),
+    NotKept: Kind(404, "not-kept", "There is no such thing"),
+    NotReducedYet: Kind(404, "no-result", "There is no result yet"),
     NothingAcceptable: Kind(406, "not-acceptable", "No acceptable form of the answer"),
     UploadTooSlow: Kind(408, "too-slow", "The upload was too slow"),
+    IdempotencyConflict: Kind(409, "other-request", "The idempotency key came before with another request"),
+    LogGone: Kind(409, "log-gone", "The log is no longer kept"),
+    VersionConflict: Kind(412, "version-conflict", "It has been changed in the meantime"),
+    PreconditionFailed: Kind(412, "precondition-failed", "The condition does not hold"),
     InputTooLarge: Kind(413, "too-large", "The input is too large"),
     BodyNotSupported: Kind(415, "not-supported", "The form of the body is not supported"),
     WrongValues: Kind(422, "wrong-values", "Values are wrong"),
+    MissingPrecondition: Kind(428, "if-match-needed", "If-Match is needed"),
     TooBusy: Kind(503, "busy", "Too much work at once"),
     NoRoom: Kind(503, "no-room", "Uploads cannot be stored"),
+    QueueFull: Kind(503, "queue-full", "The queue is full"),
+    StorageUnavailable: Kind(503, "storage-unavailable", "What is kept cannot be reached"),
+    NothingKept: Kind(503, "nothing-kept", "This server keeps no flights"),
 }
+COME_AGAIN: dict[type[LoiterwiseError], int] = {StorageUnavailable: 5}
+"""Seconds for `Retry-After` where the failure itself names none."""
 INTERNAL = Kind(500, "internal", "The service failed")
 
 
@@ -80,8 +100,14 @@ def _answer_known(error: LoiterwiseError) -> Response:
         kind.status,
         str(error),
         errors=getattr(error, "errors", None),
-        headers=getattr(error, "headers", None),
+        headers=_headers_of(error),
     )
+
+
+def _headers_of(error: LoiterwiseError) -> dict[str, str]:
+    seconds = next((COME_AGAIN[cls] for cls in type(error).__mro__ if cls in COME_AGAIN), None)
+    waiting = {} if seconds is None else {"Retry-After": str(seconds)}
+    return waiting | getattr(error, "headers", {})
 
 
 def _answer_http(error: HTTPException) -> Response | HTTPException:

@@ -6,10 +6,11 @@ from schemas.health import LiveSchema, ReadySchema
 from service.config import Config
 from service.http.answers import json_answer
 from service.http.spool import check_writable
+from service.keeping import Keeping
 from service.version import SERVICE
 
 
-def health(config: Config) -> Blueprint:
+def health(config: Config, keeping: Keeping) -> Blueprint:
     blueprint = Blueprint("health", __name__)
 
     @blueprint.get("/v1/health/live")
@@ -19,6 +20,7 @@ def health(config: Config) -> Blueprint:
     @blueprint.get("/v1/health/ready")
     def ready() -> Response:
         check_writable(config.spool)
+        keeping.check()
         return json_answer(ReadySchema().dump({"status": "ready", "version": SERVICE}))
 
     return blueprint

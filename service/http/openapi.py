@@ -14,10 +14,10 @@ from schemas.health import LiveSchema, ReadySchema
 from schemas.parts import PARTS
 from schemas.problem import ProblemSchema
 from schemas.reduction import ReductionSchema
-from service.http.errors import INTERNAL, KINDS, PROBLEM_JSON, Kind
+from service.http.errors import INTERNAL, KINDS, Kind
+from service.http.openapi_kept import KEPT_SCHEMAS, kept_paths
+from service.http.openapi_parts import Json, answer_headers, json_response, problem_response, problems, response_name
 from service.version import SERVICE
-
-Json = dict[str, Any]
 
 DESCRIPTION = """\
 Turns a flight (pressures and GPS velocity of loiter circles or legs) into an airspeed with its true uncertainty, the
@@ -31,17 +31,26 @@ never a stall-warning device.
 STATUS_WORDS = {
     400: "Unreadable: no log, table or batch, broken JSON (also a `NaN` token), a body cut short.",
     401: "No key, or one that is not known.",
-    404: "There is no such thing.",
+    403: "The key's scopes leave this call out.",
+    404: "There is no such thing, or it is another owner's; or there is no result yet.",
     405: "The method is not allowed here; `Allow` says which are.",
     406: "`Accept` leaves out every form of the answer.",
     408: "The upload was too slow.",
+    409: "The idempotency key came before with another request; or the log is no longer kept.",
+    412: "`If-Match` or `If-None-Match` does not hold: it has been changed.",
     413: "The body, or what it decodes to, is too large.",
     415: "A media type or content coding that is not read; `Accept-Post` or `Accept-Encoding` says which are.",
     422: "Read, but values are wrong; `errors` says where.",
+    428: "It exists already: a change needs its ETag as `If-Match`.",
     500: "The service failed; its log holds the request's id.",
-    503: "Too much work at once, or no room for uploads; `Retry-After` says when to come again.",
+    503: (
+        "Too much work at once, a full queue, no room, a database out of reach: `Retry-After` says when to come again. "
+        "Or this server keeps no flights."
+    ),
 }
-REDUCTION_PROBLEMS = (400, 401, 406, 408, 413, 415, 422, 500, 503)
+READ_STRICTLY = frozenset({"ExclusionReason", "Installation"})
+"""Further bodies that take no unknown fields."""
+REDUCTION_PROBLEMS = (400, 401, 403, 406, 408, 413, 415, 422, 500, 503)
 
 
 def problem_kinds() -> list[Kind]:
@@ -54,17 +63,21 @@ def openapi_document() -> Json:
     """The whole document as a plain dict."""
     marshmallow = MarshmallowPlugin(schema_name_resolver=_schema_name)
     spec = APISpec("Loiterwise", SERVICE, "3.1.0", plugins=[marshmallow], info={"description": DESCRIPTION})
-    for schema in (ReductionSchema, BatchSchema, ProblemSchema, LiveSchema, ReadySchema):
-        spec.components.schema(_schema_name(schema), schema=schema)
+    for schema in (ReductionSchema, BatchSchema, ProblemSchema, LiveSchema, ReadySchema, *KEPT_SCHEMAS):
+        # one that another holds is registered with it
+        if _schema_name(schema) not in spec.components.schemas:
+            spec.components.schema(_schema_name(schema), schema=schema)
     for status, words in STATUS_WORDS.items():
-        spec.components.response(_response_name(status), _problem_response(words))
+        spec.components.response(response_name(status), problem_response(words))
     spec.components.security_scheme(
         "key", {"type": "http", "scheme": "bearer", "description": "Needed only where the server is set to `keys`."}
     )
     spec.path("/v1/reductions", operations={"post": _create_reduction()})
+    for path, operations in kept_paths(_bodies(), _include_parameter(), _header_parameters()).items():
+        spec.path(path, operations=operations)
     spec.path("/v1/health/live", operations={"get": _read("Is the process alive?", "live", "Live", "health")})
     spec.path(
-        "/v1/health/ready", operations={"get": _read("Can it take work?", "ready", "Ready", "health", problems=(503,))}
+        "/v1/health/ready", operations={"get": _read("Can it take work?", "ready", "Ready", "health", also=(503,))}
     )
     spec.path("/v1/openapi.json", operations={"get": _openapi_operation()})
     spec.path("/docs", operations={"get": _page("This document for people.", "docs")})
@@ -92,8 +105,8 @@ def _create_reduction() -> Json:
         "parameters": [_include_parameter(), *_header_parameters()],
         "requestBody": {"required": True, "content": _bodies()},
         "responses": {
-            "200": _json_response("The answer, also when the verdict is `refused`.", "Reduction"),
-            **_problems(REDUCTION_PROBLEMS),
+            "200": json_response("The answer, also when the verdict is `refused`.", "Reduction"),
+            **problems(REDUCTION_PROBLEMS),
         },
     }
 
@@ -157,23 +170,23 @@ def _request_id_parameter() -> Json:
     }
 
 
-def _read(summary: str, operation: str, schema: str, tag: str, problems: tuple[int, ...] = ()) -> Json:
+def _read(summary: str, operation: str, schema: str, tag: str, also: tuple[int, ...] = ()) -> Json:
     return {
         "operationId": operation,
         "tags": [tag],
         "summary": summary,
-        "responses": {"200": _json_response(summary, schema), **_problems((*problems, 500))},
+        "responses": {"200": json_response(summary, schema), **problems((*also, 500))},
     }
 
 
 def _openapi_operation() -> Json:
     content = {"application/json": {"schema": {"type": "object", "description": "An OpenAPI 3.1 document."}}}
-    answer = {"description": "The document.", "headers": _answer_headers(), "content": content}
+    answer = {"description": "The document.", "headers": answer_headers(), "content": content}
     return {
         "operationId": "openapi",
         "tags": ["documentation"],
         "summary": "This document.",
-        "responses": {"200": answer, **_problems((500,))},
+        "responses": {"200": answer, **problems((500,))},
     }
 
 
@@ -184,32 +197,10 @@ def _page(summary: str, operation: str) -> Json:
         "tags": ["documentation"],
         "summary": summary,
         "responses": {
-            "200": {"description": "A page without scripts.", "headers": _answer_headers(), "content": content},
-            **_problems((500,)),
+            "200": {"description": "A page without scripts.", "headers": answer_headers(), "content": content},
+            **problems((500,)),
         },
     }
-
-
-def _json_response(words: str, schema: str) -> Json:
-    content = {"application/json": {"schema": {"$ref": f"#/components/schemas/{schema}"}}}
-    return {"description": words, "headers": _answer_headers(), "content": content}
-
-
-def _answer_headers() -> Json:
-    return {"X-Request-Id": {"description": "Id of this request.", "schema": {"type": "string"}}}
-
-
-def _problem_response(words: str) -> Json:
-    content = {PROBLEM_JSON: {"schema": {"$ref": "#/components/schemas/Problem"}}}
-    return {"description": words, "headers": _answer_headers(), "content": content}
-
-
-def _problems(statuses: tuple[int, ...]) -> Json:
-    return {str(status): {"$ref": f"#/components/responses/{_response_name(status)}"} for status in statuses}
-
-
-def _response_name(status: int) -> str:
-    return f"Problem{status}"
 
 
 def _finished(document: Json) -> Json:
@@ -218,7 +209,7 @@ def _finished(document: Json) -> Json:
     schemas["BatchGps"]["anyOf"] = [
         {"required": list(pair), "properties": {name: {"type": "array"} for name in pair}} for pair in VELOCITY
     ]
-    for name in _reached(schemas, "Batch"):
+    for name in _reached(schemas, "Batch") | READ_STRICTLY:
         schemas[name]["additionalProperties"] = False
     return document
 

@@ -31,6 +31,8 @@ MOST_SETTINGS_BYTES = 1024 * 1024
 class Submission:
     path: Path
     sha256: str
+    size: int
+    """Bytes."""
     settings: object | None
     """Decoded JSON of the part `settings`; None where none came."""
 
@@ -51,7 +53,25 @@ def received(request: Request, config: Config) -> Iterator[Submission]:
         settings = _receive(request, config, file, media_type)
         file.finish()
         _check_json(file, media_type)
-        yield Submission(file.path, file.sha256, settings)
+        yield Submission(file.path, file.sha256, file.size, settings)
+
+
+def received_json(request: Request, config: Config) -> object:
+    """A small JSON body: a profile, settings, a reason. Raises as `received` does."""
+    if request.mimetype != JSON:
+        raise BodyNotSupported(
+            f"This body is read as {JSON}; the Content-Type says {request.mimetype[:100]!r}.", {"Accept-Post": JSON}
+        )
+    with Pace(_connection(request), config.min_upload_rate, config.upload_grace_s) as pace:
+        sent = SentBody(request, min(config.max_upload_bytes, MOST_SETTINGS_BYTES), pace)
+        try:
+            source = decoded(request, sent, MOST_SETTINGS_BYTES)
+            body = bytearray()
+            while chunk := source.read(CHUNK_BYTES):
+                body += chunk
+        finally:
+            g.received_bytes = sent.received
+    return decode(bytes(body))
 
 
 def _receive(request: Request, config: Config, file: SpooledFile, media_type: str) -> object | None:

@@ -18,6 +18,7 @@ from service import cli
 from service.cli import main
 from service.domain.codes import CAUTIONS
 from service.version import SERVICE
+from service.work.settings import WorkSettings
 from tests import made
 
 BATCH = json.dumps(made.batch()).encode()
@@ -214,11 +215,22 @@ def test_serve_checks_before_it_starts(monkeypatch: pytest.MonkeyPatch, capsys: 
     assert "LOITERWISE_KEY" in capsys.readouterr().err
 
 
-def test_serve_becomes_the_server(monkeypatch: pytest.MonkeyPatch) -> None:
-    started: list[list[str]] = []
-    for name in ("LOITERWISE_BIND", "LOITERWISE_WORKERS", "LOITERWISE_THREADS"):
-        monkeypatch.setenv(name, "")
-    monkeypatch.setattr(os, "execv", lambda _path, command: started.append(command))
-    main(["serve", "--bind", "127.0.0.1:9999", "--workers", "3"])
-    assert started[0][1:] == ["-m", "gunicorn", "-c", "python:service.server", "service.app:create_app()"]
+def test_serve_starts_the_server_beside_workers(monkeypatch: pytest.MonkeyPatch, tmp_path: Path) -> None:
+    started: list[tuple[WorkSettings, list[str]]] = []
+    for name in ("BIND", "WORKERS", "THREADS", "DATA", "DATABASE_URL", "JOB_WORKERS"):
+        monkeypatch.setenv(f"LOITERWISE_{name}", "")
+    monkeypatch.chdir(tmp_path)
+
+    def supervise(settings: WorkSettings, *, beside: list[str]) -> int:
+        started.append((settings, beside))
+        return 7
+
+    monkeypatch.setattr("service.work.supervise.supervise", supervise)
+    assert main(["serve", "--bind", "127.0.0.1:9999", "--workers", "3"]) == 7
+    ((settings, command),) = started
+    assert command[1:] == ["-m", "gunicorn", "-c", "python:service.server", "service.app:create_app()"]
     assert (os.environ["LOITERWISE_BIND"], os.environ["LOITERWISE_WORKERS"]) == ("127.0.0.1:9999", "3")
+    # nothing is said of a place: under the working directory, for the server as for the workers
+    assert os.environ["LOITERWISE_DATA"] == settings.store == str(tmp_path / "loiterwise-data")
+    assert settings.workers == 2
+    assert (tmp_path / "loiterwise-data/loiterwise.sqlite").exists()

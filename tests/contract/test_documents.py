@@ -27,9 +27,11 @@ from service.domain.settings import (
     WarningSettings,
     Window,
 )
+from service.http.openapi import openapi_document
 from service.intake import reduce_file
 from service.readers.units import to_si
 from service.summary import summary_text
+from tests.contract.conftest import KeptClient
 
 ROOT = Path(__file__).parents[2]
 NAMES = ("README.md", "DEVELOPERS.md", "samples/README.md")
@@ -114,7 +116,7 @@ def test_modules_to_run_exist(name: str) -> None:
 @pytest.mark.parametrize("name", NAMES)
 def test_loiterwise_commands_are_understood(name: str) -> None:
     for line in commands(name):
-        for words in re.findall(r"(?:^|[ /])loiterwise ((?:reduce|serve)[^&|#]*)", line):
+        for words in re.findall(r"(?:^|[ /])loiterwise ((?:reduce|serve|work|migrate|sweep|keys)\b[^&|#]*)", line):
             given = command_parser().parse_args(shlex.split(words))
             assert (ROOT / getattr(given, "file", ".")).exists()
             assert (ROOT / (getattr(given, "settings", None) or ".")).exists()
@@ -147,7 +149,7 @@ class Call(NamedTuple):
 def as_call(line: str) -> Call:
     """A `curl` line as the request that it makes; fails for what this does not know."""
     words = shlex.split(line, comments=True)
-    piped = b""
+    piped, method = b"", None
     if words[:2] == ["gzip", "-c"]:
         piped, words = gzip.compress((ROOT / words[2]).read_bytes()), words[4:]
     assert words.pop(0) == "curl"
@@ -165,15 +167,21 @@ def as_call(line: str) -> Call:
         elif word == "--data-binary":
             path = words.pop(0).removeprefix("@")
             body = piped if path == "-" else (ROOT / path).read_bytes()
+        elif word == "-X":
+            method = words.pop(0)
+        elif word == "-d":
+            body = words.pop(0).encode()
         else:
             assert word.startswith(SERVER), word
             url = word.removeprefix(SERVER)
     if forms:
         headers["Content-Type"], body = multipart(forms["log"], forms["settings"])
-    return Call("GET" if body is None else "POST", url, headers, body)
+    return Call(method or ("GET" if body is None else "POST"), url, headers, body)
 
 
-CURLS = sorted({line for name in NAMES for line in commands(name) if re.search(r"\bcurl ", line)})
+ALL_CURLS = [line for name in NAMES for line in commands(name) if re.search(r"\bcurl ", line)]
+KEPT_CURLS = [line for line in ALL_CURLS if re.search(r"/v1/(?:flights|aircraft)", line)]
+CURLS = sorted(set(ALL_CURLS) - set(KEPT_CURLS))
 
 
 @pytest.mark.parametrize("line", CURLS, ids=range(len(CURLS)))
@@ -190,6 +198,41 @@ def test_every_path_of_the_service_is_called_by_an_example() -> None:
     assert len(CURLS) >= 12
     paths = {as_call(line).path.partition("?")[0] for line in CURLS}
     assert paths == {"/v1/reductions", "/v1/health/live", "/v1/health/ready", "/v1/openapi.json", "/docs"}
+
+
+def test_the_lines_about_kept_flights_are_answered_in_their_order(kept: KeptClient) -> None:
+    flight = ""
+    with kept.worker():
+        for line in KEPT_CURLS:
+            call = as_call(line.replace("$FLIGHT", flight))
+            answer = kept.client.open(call.path, method=call.method, headers=call.headers, data=call.body)
+            assert answer.status_code in {200, 201, 202, 204}, (line, answer.text)
+            if not flight and call.method == "POST":
+                flight = answer.get_json()["flight"]
+
+
+def test_every_call_about_kept_flights_has_its_line() -> None:
+    shown = {(call.method, templated(call.path)) for call in map(as_call, KEPT_CURLS)}
+    documented = {
+        (method.upper(), path)
+        for path, methods in openapi_document()["paths"].items()
+        if path.startswith(("/v1/flights", "/v1/aircraft"))
+        for method in methods
+    }
+    assert shown == documented
+    table = {
+        (method, path)
+        for row in first_cells(README, "### Flights that are kept")
+        for method in re.findall(r"[A-Z]{3,}", row[0])
+        for path in re.findall(r"/[\w/{}-]+", row[0])
+    }
+    assert {path for _, path in table if path.startswith("/v1")} <= {path for _, path in documented}
+
+
+def templated(path: str) -> str:
+    """The path of a line as the document writes it."""
+    bare = path.partition("?")[0].replace("$FLIGHT", "{flight}").replace("brackenwing", "{aircraft}")
+    return re.sub(r"/reductions/\d+$", "/reductions/{number}", bare)
 
 
 def test_the_problem_shown_is_the_problem_given(client: FlaskClient) -> None:

@@ -1,6 +1,9 @@
 """The published document: valid, complete, and true of the answers."""
 
 import json
+import re
+import tempfile
+from pathlib import Path
 from typing import Any
 
 import jsonschema
@@ -35,7 +38,7 @@ def test_it_is_valid(client: FlaskClient) -> None:
 def test_it_names_every_call_and_no_other() -> None:
     app = create_app(Config())
     routes = {
-        (rule.rule, method.lower())
+        (re.sub(r"<(?:int:)?(\w+)>", r"{\1}", rule.rule), method.lower())
         for rule in app.url_map.iter_rules()
         for method in (rule.methods or set()) - {"HEAD", "OPTIONS"}
         if rule.endpoint != "static"
@@ -115,12 +118,15 @@ def test_every_error_of_every_call_is_a_problem() -> None:
     for methods in document["paths"].values():
         for operation in methods.values():
             for status, answer in operation["responses"].items():
-                if status != "200":
+                if int(status) >= 400:
                     named = document["components"]["responses"][answer["$ref"].rpartition("/")[2]]
                     assert list(named["content"]) == ["application/problem+json"]
 
 
-_fuzzed = schemathesis.openapi.from_wsgi("/v1/openapi.json", create_app(Config(log_level="ERROR")))
+# its own folder of kept flights, gone with the process
+_folder = tempfile.TemporaryDirectory(prefix="loiterwise-made-up-")
+_config = Config(data=Path(_folder.name), log_level="ERROR", answer_wait_s=0.0, queue_limit=1_000_000)
+_fuzzed = schemathesis.openapi.from_wsgi("/v1/openapi.json", create_app(_config))
 
 
 @_fuzzed.parametrize()

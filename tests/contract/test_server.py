@@ -57,6 +57,7 @@ def server(tmp_path_factory: pytest.TempPathFactory) -> Iterator[Server]:
         "PORT": str(port),
         "LOITERWISE_DATA": str(folder / "data"),
         "LOITERWISE_WORKERS": "1",
+        "LOITERWISE_JOB_WORKERS": "1",
         "LOITERWISE_MAX_UPLOAD_BYTES": str(MOST_BYTES),
         "LOITERWISE_UPLOAD_GRACE_S": "1",
         "LOITERWISE_MIN_UPLOAD_RATE": "1000000000",
@@ -148,6 +149,23 @@ def test_a_kept_connection_serves_on_after_an_error(server: Server) -> None:
         answer.read()
         assert answer.status == 415
     connection.close()
+
+
+def test_a_flight_is_kept_and_reduced_by_a_worker(server: Server) -> None:
+    headers = {"Content-Type": "application/json", "Idempotency-Key": "once"}
+    status, document = server.ask("POST", "/v1/flights?aircraft=kite", body=BATCH, headers=headers)
+    assert (status, document["state"]) == (201, "done")
+    assert document["calibration"]["speed_scale"] is not None
+    again = server.ask("POST", "/v1/flights?aircraft=kite", body=BATCH, headers=headers)
+    assert again == (201, document)
+    connection = server.connect()
+    connection.request("GET", f"/v1/flights/{document['flight']}/log")
+    assert connection.getresponse().read() == BATCH
+    connection.close()
+    assert server.ask("GET", f"/v1/flights/{document['flight']}/airspeed?to_s=10")[1]["time_s"]
+    assert server.ask("GET", "/v1/health/ready")[0] == 200
+    # the child may not have tidied up yet
+    assert [path for path in spooled(server) if path.name.startswith("loiterwise-upload-")] == []
 
 
 def test_it_listens_on_loopback_only_while_open(server: Server) -> None:

@@ -10,7 +10,7 @@ from scipy import stats
 from service.fleet.changes import FALSE_ALARM_RATE
 from tests.fleet_campaign import Cell, Marks, first_row, run_cell, second_row
 
-FLEETS = 150
+FLEETS = 120
 CELLS = [(3, 0.0), (3, 0.015), (10, 0.0), (10, 0.005), (10, 0.015)]
 CHANCE = 1e-5 / (len(CELLS) * 12)
 

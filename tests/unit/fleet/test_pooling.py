@@ -6,13 +6,14 @@ from hypothesis import given
 from hypothesis import strategies as st
 from scipy import stats
 
+from service.domain.arrays import BoolArray, FloatArray
 from service.fleet.between_flights import ASSUMED_FOR_ONE_FLIGHT, PRIOR_MEDIAN
 from service.fleet.mixtures import NORMAL_95
 from service.fleet.pooling import SPARED, heterogeneity, pool, pool_logs
 from tests.unit.fleet.made import by_quadrature, flights, sound
 
 
-def none_apart(count: int) -> np.ndarray:
+def none_apart(count: int) -> BoolArray:
     return np.zeros(count, dtype=np.bool_)
 
 
@@ -34,10 +35,10 @@ def test_one_flight_is_widened_by_the_tau_assumed() -> None:
     assert factor.heterogeneity is None
 
 
-def chance_below(end: float, spread: float) -> Callable[[float, np.ndarray, np.ndarray], float]:
+def chance_below(end: float, spread: float) -> Callable[[float, FloatArray, FloatArray], float]:
     """Of a quantity of variance tau^2 + spread^2 about the mean; of the mean itself if `spread` is below zero."""
 
-    def asked(tau: float, mean: np.ndarray, covariance: np.ndarray) -> float:
+    def asked(tau: float, mean: FloatArray, covariance: FloatArray) -> float:
         beside = 0.0 if spread < 0 else tau**2 + spread**2
         return float(stats.norm.cdf(end, mean[0], np.sqrt(covariance[0, 0] + beside)))
 
